@@ -1,0 +1,8 @@
+"""What an instrument recorded, with its settings: validated once, immutable."""
+
+from recon.acquisition.counts import Counts
+from recon.acquisition.frames import Frames
+from recon.acquisition.pulses import GaussianPulse, SampledPulse
+from recon.acquisition.time_tags import TimeTags
+
+__all__ = ["Counts", "Frames", "GaussianPulse", "SampledPulse", "TimeTags"]

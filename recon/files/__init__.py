@@ -1,0 +1,6 @@
+"""Acquisition files and the safe writing of files in general."""
+
+from recon.files.atomic import replacing
+from recon.files.hdf5 import load, load_note, load_truth, save
+
+__all__ = ["load", "load_note", "load_truth", "replacing", "save"]

@@ -1,0 +1,222 @@
+"""Acquisition files: HDF5 in NeXus layout.
+
+    entry                     NXentry; attributes acquisition ("counts", "time_tags", "frames") and
+                              acquisition_version ("1")
+      data                    NXdata: detections (row, column) or counts (frame, row, column)
+      events                  NXevent_data, for time tags in place of data: event_id = row * columns + column
+                              and event_time_offset, since the start of the period. Tags do not say which
+                              period they belong to, so one event_time_zero stands for all
+      instrument/detector     NXdetector: the settings, and pixel_mask (0 = usable)
+      instrument/source       NXsource: period, and pulse_shape with rms, or with times and values
+      truth                   NXcollection: the images a simulation started from
+      note                    NXnote
+
+A setting is a scalar or a map with a `units` attribute ("1" = none). The file carries the checksums
+HDF5 offers, so that damage is found rather than read as data.
+"""
+
+import os
+from collections.abc import Mapping
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from recon.acquisition import Counts, Frames, GaussianPulse, SampledPulse, TimeTags
+from recon.acquisition.time_tags import image_shape
+from recon.errors import InputError
+from recon.files.atomic import replacing
+from recon.files.guard import GuardedFile, opened
+from recon.files.nexus import NexusWriter
+from recon.validation import Range, whole_numbers
+
+Acquisition = Counts | TimeTags | Frames
+
+VERSION = "1"
+KINDS = {Counts: "counts", TimeTags: "time_tags", Frames: "frames"}
+DETECTOR = "entry/instrument/detector"
+SOURCE = "entry/instrument/source"
+PULSE = f"{SOURCE}/pulse_shape"
+RATES = {"trials": (DETECTOR, "1"), "gain": (DETECTOR, "1"), "background": (DETECTOR, "1")}
+SETTINGS = {  # by kind: name, group and units of what is stored as it stands
+    "counts": RATES,
+    "time_tags": RATES
+    | {
+        "period": (SOURCE, "s"),
+        "time_zero": (DETECTOR, "s"),
+        "offset": (DETECTOR, "s"),
+        "refractive_index": (DETECTOR, "1"),
+        "interval": (DETECTOR, "s"),
+    },
+    "frames": {"dose": (DETECTOR, "1")},
+}
+OPTIONAL = ("interval",)
+
+
+def save(
+    path: str | os.PathLike,
+    acquisition: Acquisition,
+    truth: Mapping[str, ArrayLike] | None = None,
+    note: str | None = None,
+) -> None:
+    """Write an acquisition file, all or nothing.
+
+    truth: arrays of numbers or booleans by name, such as the images a simulation started from.
+    note: text for whoever opens the file.
+
+    Reading gives back the same acquisition, bit for bit. Raises InputError for anything else, and for a
+    path that cannot be written.
+    """
+    kind = KINDS.get(type(acquisition))
+    if kind is None:
+        raise InputError(f"acquisition is {type(acquisition).__name__}; give Counts, TimeTags or Frames.")
+    truth = _checked_truth(truth)
+    note = _checked_note(note)
+    with replacing(path) as temporary, NexusWriter(temporary) as out:
+        plotted = "events" if kind == "time_tags" else "data"
+        out.group("entry", "NXentry", default=plotted, acquisition=kind, acquisition_version=VERSION)
+        out.group("entry/instrument", "NXinstrument")
+        out.group(DETECTOR, "NXdetector")
+        for name, (group, units) in SETTINGS[kind].items():
+            if group == SOURCE:
+                out.group(SOURCE, "NXsource")
+            if (value := getattr(acquisition, name)) is not None:
+                out.dataset(f"{group}/{name}", value, units=units)
+        if acquisition.mask is not None:
+            out.dataset(f"{DETECTOR}/pixel_mask", (~acquisition.mask).astype(np.int8))
+        _WRITERS[kind](out, acquisition)
+        if truth:
+            out.group("entry/truth", "NXcollection")
+            for name, values in truth.items():
+                out.dataset(f"entry/truth/{name}", values)
+        if note:
+            out.group("entry/note", "NXnote")
+            out.dataset("entry/note/type", np.bytes_(b"text/plain"))
+            out.dataset("entry/note/data", np.bytes_(note))
+
+
+def load(path: str | os.PathLike) -> Acquisition:
+    """Read an acquisition file.
+
+    Raises InputError if the file is missing, unreadable, damaged, incomplete or of another kind, if it
+    declares more than it can hold, points outside itself, or describes an impossible acquisition.
+    """
+    with opened(path) as file:
+        version = file.text("entry", "acquisition_version")
+        if version != VERSION:
+            raise InputError(f"entry@acquisition_version is {version}; give a file of version {VERSION}.")
+        kind = file.text("entry", "acquisition")
+        if kind not in SETTINGS:
+            raise InputError(f"entry@acquisition is {kind}; give one of {', '.join(SETTINGS)}.")
+        settings = {
+            name: file.array(f"{group}/{name}", units=units)
+            for name, (group, units) in SETTINGS[kind].items()
+            if name not in OPTIONAL or file.has(f"{group}/{name}")
+        }
+        if file.has(f"{DETECTOR}/pixel_mask"):
+            settings["mask"] = np.asarray(file.array(f"{DETECTOR}/pixel_mask", kinds="iu") == 0)
+        return _READERS[kind](file, settings)
+
+
+def load_truth(path: str | os.PathLike) -> dict[str, NDArray]:
+    """The truth saved with an acquisition, arrays by name; empty if there is none. Raises InputError."""
+    with opened(path) as file:
+        if not file.has("entry/truth"):
+            return {}
+        return {name: file.array(f"entry/truth/{name}", "biuf") for name in file.names("entry/truth")}
+
+
+def load_note(path: str | os.PathLike) -> str:
+    """The note saved with an acquisition; empty if there is none. Raises InputError."""
+    with opened(path) as file:
+        return file.string("entry/note/data") if file.has("entry/note") else ""
+
+
+def _write_counts(out: NexusWriter, counts: Counts) -> None:
+    out.dataset(f"{DETECTOR}/several_per_trial", np.uint8(counts.several_per_trial))
+    out.data_group("entry/data", "detections", counts.detections, ("row", "column"))
+
+
+def _read_counts(file: GuardedFile, settings: dict) -> Counts:
+    several = Range("0 or 1", 0, 1)
+    several_per_trial = whole_numbers(
+        file.array(f"{DETECTOR}/several_per_trial"), "several_per_trial", several
+    )
+    return Counts(
+        file.array("entry/data/detections"), several_per_trial=bool(several_per_trial.all()), **settings
+    )
+
+
+def _write_frames(out: NexusWriter, frames: Frames) -> None:
+    out.data_group("entry/data", "counts", frames.counts, ("frame", "row", "column"))
+
+
+def _read_frames(file: GuardedFile, settings: dict) -> Frames:
+    return Frames(file.array("entry/data/counts"), **settings)
+
+
+def _write_time_tags(out: NexusWriter, tags: TimeTags) -> None:
+    out.dataset(f"{DETECTOR}/shape", np.array(tags.shape, dtype=np.int64))
+    if isinstance(tags.pulse, GaussianPulse):
+        out.group(PULSE, "NXcollection")
+        out.dataset(f"{PULSE}/rms", tags.pulse.rms, units="s")
+    else:
+        out.data_group(PULSE, "values", tags.pulse.values, ("times",), times=tags.pulse.times)
+    out.group("entry/events", "NXevent_data")
+    out.dataset("entry/events/event_id", tags.row * np.int32(tags.shape[1]) + tags.column)
+    out.dataset("entry/events/event_time_offset", tags.time, units="s")
+    out.dataset("entry/events/event_time_zero", np.zeros(1), units="s")
+    out.dataset("entry/events/event_index", np.zeros(1, dtype=np.int64))
+
+
+def _read_time_tags(file: GuardedFile, settings: dict) -> TimeTags:
+    rows, columns = image_shape(file.array(f"{DETECTOR}/shape"))
+    if file.has(f"{PULSE}/rms"):
+        pulse = GaussianPulse(file.array(f"{PULSE}/rms", units="s"))
+    else:
+        pulse = SampledPulse(file.array(f"{PULSE}/times", units="s"), file.array(f"{PULSE}/values"))
+    pixels = Range(f"whole numbers from 0 to {rows * columns - 1}", 0, rows * columns - 1)
+    pixel = whole_numbers(file.array("entry/events/event_id"), "event_id", pixels)
+    row, column = np.divmod(pixel, np.int32(columns))
+    time = file.array("entry/events/event_time_offset", units="s")
+    return TimeTags(row, column, time, shape=(rows, columns), pulse=pulse, **settings)
+
+
+_WRITERS = {"counts": _write_counts, "time_tags": _write_time_tags, "frames": _write_frames}
+_READERS = {"counts": _read_counts, "time_tags": _read_time_tags, "frames": _read_frames}
+
+
+def _checked_truth(truth: Mapping[str, ArrayLike] | None) -> dict[str, NDArray]:
+    if truth is None:
+        return {}
+    if not isinstance(truth, Mapping):
+        raise InputError(f"truth is {type(truth).__name__}; give arrays by name.")
+    checked = {}
+    for name, value in truth.items():
+        if not isinstance(name, str) or not name.isidentifier():
+            raise InputError(f"truth has the name {name!r}; give names of letters, digits and underscores.")
+        try:
+            values = np.asarray(value)
+        except Exception as error:  # an object may raise anything while it is turned into an array
+            raise InputError(
+                f"truth {name} is not an array of numbers; give numbers in equal rows."
+            ) from error
+        if values.dtype.kind not in "biuf" or values.size == 0:
+            raise InputError(
+                f"truth {name} has shape {values.shape} and type {values.dtype.name}; give numbers."
+            )
+        checked[name] = values
+    return checked
+
+
+def _checked_note(note: str | None) -> bytes:
+    if not isinstance(note, str | None):
+        raise InputError(f"note is {type(note).__name__}; give text.")
+    try:
+        text = (note or "").encode()
+    except UnicodeEncodeError as error:
+        raise InputError(
+            f"note at {error.start} is half a character; give text that UTF-8 can hold."
+        ) from error
+    if b"\0" in text:
+        raise InputError(f"note at {text.index(bytes(1))} is a zero byte; give plain text.")
+    return text

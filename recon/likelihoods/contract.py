@@ -1,0 +1,140 @@
+"""What a likelihood must offer.
+
+A likelihood is the negative log-likelihood of an acquisition as a function of an image x of shape
+(rows, columns), L(x). Its `value` is half the deviance,
+
+    value(x) = L(x) - constant,     constant = L at a perfect fit,
+
+which is zero when the image explains every pixel exactly, so that a relative gap means something;
+`constant` gives the negative log-likelihood back. Pixels with no data contribute exactly zero.
+
+A researcher's likelihood subclasses `Likelihood`. With `convex = True` it writes `value_map`,
+`constant`, `gradient`, `curvature`, `prox`, `conjugate_map`, `fisher_information`, `residuals`,
+`draw` and, for the conic solver, `expression`. With `convex = False` it writes `majorise` in place
+of `prox`, `conjugate_map` and `expression`. Everything is per pixel (separable).
+"""
+
+from __future__ import annotations
+
+from abc import ABC, abstractmethod
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+if TYPE_CHECKING:
+    import cvxpy as cp
+
+
+@dataclass(frozen=True)
+class Interval:
+    """An interval of image values; an open end is a value the likelihood cannot take."""
+
+    low: float
+    high: float
+    low_open: bool = False
+    high_open: bool = False
+
+    def __contains__(self, value: float) -> bool:
+        above = value > self.low or (value == self.low and not self.low_open)
+        below = value < self.high or (value == self.high and not self.high_open)
+        return above and below
+
+
+class Likelihood(ABC):
+    """Half the deviance of an acquisition as a function of an image."""
+
+    convex: bool = True
+    """Whether value is convex in the image; if not, `majorise` gives a convex likelihood above it."""
+
+    shape: tuple[int, int]
+    """(rows, columns) of the image."""
+
+    @property
+    @abstractmethod
+    def domain(self) -> Interval:
+        """The image values at which value is finite, whatever the pixel."""
+
+    @property
+    @abstractmethod
+    def default_bounds(self) -> tuple[float, float]:
+        """Bounds to solve within when the user gives none; finite wherever a certificate needs it."""
+
+    @property
+    @abstractmethod
+    def constant(self) -> float:
+        """The negative log-likelihood at a perfect fit, summed over pixels."""
+
+    @abstractmethod
+    def estimate(self) -> np.ndarray:
+        """Return the image that fits each pixel best by itself (float32); the mean where there is no data."""
+
+    @abstractmethod
+    def value_map(self, x: np.ndarray) -> np.ndarray:
+        """Return half the deviance of each pixel (float64)."""
+
+    def value(self, x: np.ndarray) -> float:
+        """Return half the deviance, summed over pixels in float64."""
+        return float(np.sum(self.value_map(x), dtype=np.float64))
+
+    @abstractmethod
+    def gradient(self, x: np.ndarray) -> np.ndarray:
+        """Return dL/dx of each pixel (float64)."""
+
+    @abstractmethod
+    def curvature(self, x: np.ndarray) -> np.ndarray:
+        """Return d2L/dx2 of each pixel (float64)."""
+
+    @abstractmethod
+    def fisher_information(self, x: np.ndarray) -> np.ndarray:
+        """Return the expected curvature of each pixel if x were true (float64)."""
+
+    @abstractmethod
+    def residuals(self, x: np.ndarray) -> np.ndarray:
+        """Return the deviance residuals: sign(data - expected) sqrt(2 value_map), zero without data."""
+
+    @abstractmethod
+    def draw(self, x: np.ndarray, seed: int | np.random.Generator) -> Likelihood:
+        """Return the same likelihood on data drawn as if x were true."""
+
+    @property
+    @abstractmethod
+    def has_data(self) -> np.ndarray:
+        """A boolean map, False where a pixel contributes nothing."""
+
+    # Convex likelihoods ------------------------------------------------------------------------
+
+    def prox(self, v: np.ndarray, step: float) -> np.ndarray:
+        """Return the minimiser over the domain of L(x) + |x - v|^2 / (2 step), pixel by pixel."""
+        raise NotImplementedError(f"{type(self).__name__} has no prox")
+
+    def conjugate_map(self, u: np.ndarray, low: float, high: float) -> np.ndarray:
+        """Return max over x in [low, high] of u x - value(x), pixel by pixel (float64)."""
+        raise NotImplementedError(f"{type(self).__name__} has no conjugate")
+
+    def conjugate(self, u: np.ndarray, low: float, high: float) -> float:
+        """Return the sum of `conjugate_map` over pixels."""
+        return float(np.sum(self.conjugate_map(u, low, high), dtype=np.float64))
+
+    def proximal_step(
+        self, x: np.ndarray, adjoint: np.ndarray, extrapolated: np.ndarray, step: float, relaxation: float,
+        low: float, high: float,
+    ) -> None:
+        """Advance x by one over-relaxed step of a primal-dual solve, in place (float32 images).
+
+        x~ = clip(prox(x - step adjoint, step), low, high); extrapolated = 2 x~ - x;
+        x += relaxation (x~ - x).
+        """
+        proposed = np.clip(self.prox(x - step * adjoint, step), low, high)
+        extrapolated[...] = 2.0 * proposed - x
+        x += relaxation * (proposed - x)
+
+    def expression(self, x: cp.Expression) -> tuple[cp.Expression, list[Any]]:
+        """Return value(x) as a convex cvxpy expression of x, and constraints it needs."""
+        raise NotImplementedError(f"{type(self).__name__} has no cvxpy expression")
+
+    # Other likelihoods -------------------------------------------------------------------------
+
+    def majorise(self, x: np.ndarray) -> Likelihood:
+        """Return a convex likelihood M with M.value(z) + c >= value(z), equal at z = x."""
+        raise NotImplementedError(f"{type(self).__name__} is convex and needs no majorising")
