@@ -19,6 +19,7 @@ from __future__ import annotations
 
 from abc import ABC, abstractmethod
 from collections.abc import Iterator
+from dataclasses import replace
 from typing import TYPE_CHECKING, Any, Protocol
 
 import numpy as np
@@ -79,6 +80,17 @@ class Prior(ABC):
     def terms(self) -> Iterator[Prior]:
         """Yield the priors that this one is the sum of (itself, unless it is a Sum)."""
         yield self
+
+    weight: float | None = 1.0
+    """The factor of the penalty; None while it is to be chosen from the data."""
+
+    def typical_weight(self, information: float) -> float:
+        """Return a first guess of the weight, for an image whose pixels have this Fisher information each."""
+        raise PriorError(f"{type(self).__name__} has no rule for its weight; give weight=... yourself.")
+
+    def with_weight(self, weight: float) -> Prior:
+        """Return the same prior with another weight (for a frozen dataclass with a field `weight`)."""
+        return replace(self, weight=weight)  # type: ignore[type-var]
 
     def check_shape(self, shape: tuple[int, int]) -> None:  # noqa: B027 - most priors suit every shape
         """Raise PriorError if a map in the settings does not fit images of this shape."""

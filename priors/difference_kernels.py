@@ -37,7 +37,7 @@ def _dual_row(here, below, y_r, y_c, e_r, e_c, weight, shrink, penalty, sigma, r
 
 
 @numba.njit(**COMPILE)
-def _adjoint_row(above_r, here_r, here_c, e_above, e_r, e_c, out, fresh):
+def adjoint_row(above_r, here_r, here_c, e_above, e_r, e_c, out, fresh):
     """Write (fresh) or add a row of K' y; above_r is the row of y_r above, all zero for the first row."""
     edge = e_above[0] * above_r[0] - e_r[0] * here_r[0] - e_c[0] * here_c[0]
     if fresh:
@@ -66,13 +66,13 @@ def step(x, y_r, y_c, out, e_r, e_c, weight, shrink, penalty, sigma, relaxation,
                 weight, shrink, penalty, sigma, relaxation,
             )
             if i > start:
-                _adjoint_row(
+                adjoint_row(
                     y_r[i - 1], y_r[i], y_c[i], row(e_r, i - 1), row(e_r, i), row(e_c, i), out[i], fresh
                 )
     for band in range(bands):  # the first row of a band needs the duals of the band above
         i = band * rows // bands
         above = y_r[i - 1] if i > 0 else nothing
-        _adjoint_row(above, y_r[i], y_c[i], row(e_r, max(i - 1, 0)), row(e_r, i), row(e_c, i), out[i], fresh)
+        adjoint_row(above, y_r[i], y_c[i], row(e_r, max(i - 1, 0)), row(e_r, i), row(e_c, i), out[i], fresh)
 
 
 @numba.njit(**COMPILE)
@@ -113,7 +113,7 @@ def certify(x, y_r, y_c, out, e_r, e_c, weight, penalty, fresh, bands):
         for i in range(start, stop):
             above, here, across = buffer[(i - start) % 2], buffer[(i - start + 1) % 2], buffer[2]
             _feasible_row(y_r, y_c, i, weight, penalty, here, across)
-            _adjoint_row(
+            adjoint_row(
                 above, here, across, row(e_r, max(i - 1, 0)), row(e_r, i), row(e_c, i), out[i], fresh
             )
             values[i] = _penalty_row(x[i], x[min(i + 1, rows - 1)], row(e_r, i), row(e_c, i), penalty)

@@ -17,7 +17,7 @@ if TYPE_CHECKING:
 class DifferencePrior(Prior):
     """A penalty of the difference pair at each pixel; subclasses are frozen dataclasses with these fields."""
 
-    weight: float
+    weight: float | None
     spacing: float | tuple[float, float]
     edge_weights: np.ndarray | None
     mask: np.ndarray | None
@@ -25,7 +25,7 @@ class DifferencePrior(Prior):
     _kernel: int
 
     def __post_init__(self) -> None:
-        object.__setattr__(self, "weight", validation.positive("weight", self.weight))
+        object.__setattr__(self, "weight", validation.weight(self.weight))
         object.__setattr__(self, "spacing", validation.pixel_spacing(self.spacing))
         object.__setattr__(self, "edge_weights", validation.edge_weights(self.edge_weights))
         object.__setattr__(self, "mask", validation.image_mask(self.mask))

@@ -26,14 +26,12 @@ class Differences:
         same_shape("mask", mask, shape)
         same_shape("edge_weights", edge_weights, shape)
         self.shape = shape
-        self.exists_r, self.exists_c = _edges(shape, mask)
         full = (1, shape[1]) if mask is None and edge_weights is None else shape
         scale = np.ones((2, *full), np.float32)
         if edge_weights is not None:
             scale *= edge_weights
         if mask is not None:
-            scale[0] *= self.exists_r
-            scale[1] *= self.exists_c
+            scale *= edges(shape, mask)
         scale /= np.asarray(spacing, np.float32)[:, None, None]
         self.coefficients = scale
 
@@ -79,10 +77,10 @@ class Differences:
         return down, right
 
 
-def _edges(shape: tuple[int, int], mask: np.ndarray | None) -> tuple[np.ndarray, np.ndarray]:
+def edges(shape: tuple[int, int], mask: np.ndarray | None) -> np.ndarray:
     """Return where the edge to the next row, and to the next column, joins two existing pixels."""
     exists = np.ones(shape, bool) if mask is None else mask
-    down, right = np.zeros(shape, bool), np.zeros(shape, bool)
-    down[:-1] = exists[:-1] & exists[1:]
-    right[:, :-1] = exists[:, :-1] & exists[:, 1:]
-    return down, right
+    joined = np.zeros((2, *shape), bool)
+    joined[0, :-1] = exists[:-1] & exists[1:]
+    joined[1, :, :-1] = exists[:, :-1] & exists[:, 1:]
+    return joined

@@ -22,10 +22,14 @@ class Smoothness(DifferencePrior):
     spacing, as in `TotalVariation`; the other settings and errors are the same too.
     """
 
-    weight: float
+    weight: float | None = None
     spacing: float | tuple[float, float] = 1.0
     edge_weights: np.ndarray | None = None
     mask: np.ndarray | None = None
+
+    def typical_weight(self, information: float) -> float:
+        """See `Prior.typical_weight`; averages over about three pixels each way."""
+        return 4.0 * information * max(self.spacing) ** 2
 
     _kernel = penalties.QUADRATIC
 

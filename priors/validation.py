@@ -20,6 +20,11 @@ def positive(name: str, value: object) -> float:
     return number
 
 
+def weight(value: object) -> float | None:
+    """Return the weight as a float, or None where it is still to be chosen; else raise PriorError."""
+    return None if value is None else positive("weight", value)
+
+
 def pixel_spacing(spacing: object) -> tuple[float, float]:
     """Return (row, column) spacing from a number or a pair, or raise PriorError."""
     try:
@@ -54,31 +59,27 @@ def image_mask(mask: object) -> np.ndarray | None:
     return array
 
 
-def nonnegative_map(name: str, values: object, shapes: str, dimensions: tuple[int, ...]) -> np.ndarray | None:
-    """Return a read-only float32 map of finite numbers >= 0 with one of the given dimensions, or None."""
-    if values is None:
-        return None
-    try:
-        array = np.array(values, dtype=np.float32)
-    except (TypeError, ValueError):
-        raise PriorError(f"{name} is not an array of numbers; give {shapes}.") from None
-    if array.ndim not in dimensions or array.size == 0 or (array.ndim == 3 and array.shape[0] != 2):
-        raise PriorError(f"{name} has shape {array.shape}; give {shapes}.")
-    bad = ~(np.isfinite(array) & (array >= 0.0))
-    if bad.any():
-        place = tuple(int(i) for i in np.argwhere(bad)[0])
-        raise PriorError(f"{name}{list(place)} is {array[place]}; give finite numbers of zero or more.")
-    array.flags.writeable = False
-    return array
-
-
 def same_shape(name: str, array: np.ndarray | None, shape: tuple[int, int]) -> None:
     """Raise PriorError unless the last two dimensions of `array` are the image's."""
     if array is not None and array.shape[-2:] != tuple(shape):
         raise PriorError(f"{name} has shape {array.shape} but the image has {tuple(shape)}; make them equal.")
 
 
-def edge_weights(values: object) -> np.ndarray | None:
-    """Return read-only float32 edge weights, or None."""
+def edge_weights(values: object, above_zero: bool = False) -> np.ndarray | None:
+    """Return read-only float32 edge weights of shape (rows, columns) or (2, rows, columns), or None."""
+    if values is None:
+        return None
     shapes = "numbers of shape (rows, columns), or (2, rows, columns) for the row and column directions"
-    return nonnegative_map("edge_weights", values, shapes, (2, 3))
+    try:
+        array = np.array(values, dtype=np.float32)
+    except (TypeError, ValueError):
+        raise PriorError(f"edge_weights is not an array of numbers; give {shapes}.") from None
+    if array.ndim not in (2, 3) or array.size == 0 or (array.ndim == 3 and array.shape[0] != 2):
+        raise PriorError(f"edge_weights has shape {array.shape}; give {shapes}.")
+    bad = ~(np.isfinite(array) & ((array > 0.0) if above_zero else (array >= 0.0)))
+    if bad.any():
+        place = tuple(int(i) for i in np.argwhere(bad)[0])
+        wanted = "above zero" if above_zero else "of zero or more"
+        raise PriorError(f"edge_weights at {place} is {array[place]}; give finite numbers {wanted}.")
+    array.flags.writeable = False
+    return array

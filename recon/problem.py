@@ -4,14 +4,16 @@ from __future__ import annotations
 
 from collections.abc import Iterable
 from dataclasses import dataclass
-from typing import Any
 
 import numpy as np
 
-from priors.contract import Prior, Sum
+from priors.contract import Block, Prior, Sum
 from priors.total_variation import TotalVariation
 from recon.errors import InputError
 from recon.likelihoods.contract import Likelihood
+
+# The engine reaches the priors through here alone.
+__all__ = ["Block", "Prior", "Problem", "Sum", "default_prior"]
 
 
 @dataclass(frozen=True, init=False, eq=False)
@@ -56,9 +58,9 @@ class Problem:
         return self.likelihood.value(x) + sum(prior.value(x) for prior in self.priors)
 
 
-def default_prior(weight: float, **settings: Any) -> Prior:
-    """Return the prior used where the user names none: isotropic total variation."""
-    return TotalVariation(weight, **settings)
+def default_prior() -> Prior:
+    """Return the prior used where the user names none: isotropic total variation, weight to be chosen."""
+    return TotalVariation()
 
 
 def _flatten(priors: Prior | Sum | Iterable[Prior | Sum]) -> tuple[Prior, ...]:
@@ -66,7 +68,13 @@ def _flatten(priors: Prior | Sum | Iterable[Prior | Sum]) -> tuple[Prior, ...]:
     for part in parts:
         if not isinstance(part, Prior | Sum):
             raise InputError(f"priors holds a {type(part).__name__}; give priors such as priors.TotalVariation(1.0).")
-    return tuple(term for part in parts for term in part.terms())
+    terms = tuple(term for part in parts for term in part.terms())
+    for term in terms:
+        if term.weight is None:
+            raise InputError(
+                f"the weight of {type(term).__name__} is not set; give it, or let recon.reconstruct choose it."
+            )
+    return terms
 
 
 def _bounds(bounds: tuple[float, float] | None, likelihood: Likelihood) -> tuple[float, float]:

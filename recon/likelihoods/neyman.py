@@ -60,57 +60,55 @@ def log_poisson(n, mean):
     return n * (logarithm - excess) - 0.5 * math.log(n) - _HALF_LOG_2PI - stirling_remainder(n)
 
 
+@numba.njit(inline="always", **COMPILE)
+def law(lam, eta):
+    """Return what does not depend on y: lam, eta, log eta, a, log a, log P(0)."""
+    return lam, eta, math.log(eta), lam * math.exp(-eta), math.log(lam) - eta, lam * math.expm1(-eta)
+
+
 @numba.njit(**COMPILE)
-def posterior(y, lam, eta, table):
+def posterior(y, law, table):
     """Return log P(y), and the mean and the variance of M given y.
 
-    y: electrons, a whole number; lam > 0; eta >= 0; table: `coefficients()`.
+    y: electrons, int64; law: `law(lam, eta)` with lam > 0, eta >= 0; table: `coefficients()`.
     """
-    a = lam * math.exp(-eta)
+    lam, eta, log_eta, a, log_a, log_p0 = law
     if y == 0:
-        return lam * math.expm1(-eta), a, a
-    if y <= table_size(table):
-        return _by_polynomial(y, lam, eta, a, table)
-    return _by_primaries(float(y), lam, eta)
+        return log_p0, a, a
+    if y > LARGEST_POLYNOMIAL:
+        return _by_primaries(float(y), lam, eta, log_a)
+    value, steps, variance = _polynomial(y, a, table)
+    if a <= 1.0:
+        return log_p0 + y * log_eta + log_a + math.log(value), a + (1.0 + steps), a + variance
+    return log_p0 + y * (log_eta + log_a) + math.log(value), a + (y - steps), a + variance
 
 
 @numba.njit(**COMPILE)
-def table_size(table):
-    """The largest y in the table of coefficients."""
-    return int(math.sqrt(2.0 * table.size))
+def _polynomial(y, a, table):
+    """Return T(y) / (a y!) for a <= 1, T(y) / (a^y y!) for a > 1, and the mean and variance of a count.
 
-
-@numba.njit(**COMPILE)
-def _by_polynomial(y, lam, eta, a, table):
-    """Horner's rule for T(y) / (a^k y!) and its first two derivatives, in whichever of a, 1/a is below 1.
-
-    The count of steps from the leading power, j = k - 1 or y - k, has mean and variance free of cancellation.
+    Horner's rule, in whichever of a and 1/a is below 1, for the polynomial and two derivatives. The
+    count, K - 1 or y - K, is small where its variance is, so that the variance loses nothing.
     """
     start = y * (y - 1) // 2
     if a <= 1.0:
-        argument, last, step = a, start, -1
-        c = start + y - 1
+        argument, place, step = a, start + y - 1, -1
     else:
-        argument, last, step = 1.0 / a, start + y - 1, 1
-        c = start
-    value, first, second = table[c], 0.0, 0.0
-    while c != last:
-        c += step
+        argument, place, step = 1.0 / a, start, 1
+    value, first, second = table[place], 0.0, 0.0
+    for _ in range(y - 1):
+        place += step
         second = second * argument + first
         first = first * argument + value
-        value = value * argument + table[c]
-    steps = argument * first / value
-    variance = a + 2.0 * argument * argument * second / value + steps * (1.0 - steps)
-    log_a = math.log(lam) - eta
-    if a <= 1.0:
-        return lam * math.expm1(-eta) + y * math.log(eta) + log_a + math.log(value), a + 1.0 + steps, variance
-    return lam * math.expm1(-eta) + y * (math.log(eta) + log_a) + math.log(value), a + (y - steps), variance
+        value = value * argument + table[place]
+    scale = argument / value
+    mean = scale * first
+    return value, mean, 2.0 * scale * argument * second + mean * (1.0 - mean)
 
 
 @numba.njit(**COMPILE)
-def _by_primaries(y, lam, eta):
+def _by_primaries(y, lam, eta, log_a):
     """Sum over M of the joint probability of M and y, relative to its largest term."""
-    log_a = math.log(lam) - eta
     mode = _likeliest(y, log_a)
     width = mode / math.sqrt(y + mode)
     stride = max(1.0, math.floor(0.6 * width))

@@ -14,25 +14,23 @@ import numpy as np
 from numba import prange
 
 from recon.kernels import COMPILE, row
-from recon.likelihoods.neyman import posterior
-
-_SCANS = 64  # most points at which the likelihood of a pixel is searched for further optima
-
+from recon.likelihoods.neyman import law, posterior
 
 @numba.njit(**COMPILE)
-def _pixel(p, lam, eta, frames, start, count, times, table):
+def pixel(p, lam, eta, frames, start, count, times, table):
     """Sums over the frames of pixel p: log probability, mean of the primaries, variance of the primaries."""
-    faint = lam * math.exp(-eta)
+    terms = law(lam, eta)
     logarithm, mean, variance = 0.0, 0.0, 0.0
     empty = frames
     for pair in range(start[p], start[p + 1]):
-        log_probability, m, v = posterior(np.int64(count[pair]), lam, eta, table)
         h = np.int64(times[pair])
+        log_probability, m, v = posterior(np.int64(count[pair]), terms, table)
         empty -= h
         logarithm += h * log_probability
         mean += h * m
         variance += h * v
-    return logarithm + empty * lam * math.expm1(-eta), mean + empty * faint, variance + empty * faint
+    log_probability, m, v = posterior(0, terms, table)
+    return logarithm + empty * log_probability, mean + empty * m, variance + empty * v
 
 
 @numba.njit(parallel=True, **COMPILE)
@@ -43,7 +41,7 @@ def log_likelihood(eta, dose, usable, frames, start, count, times, table, out):
         for j in range(eta.shape[1]):
             if usable[i, j]:
                 p = i * eta.shape[1] + j
-                out[i, j] = _pixel(p, lam[j], eta[i, j], frames, start, count, times, table)[0]
+                out[i, j] = pixel(p, lam[j], eta[i, j], frames, start, count, times, table)[0]
 
 
 @numba.njit(parallel=True, **COMPILE)
@@ -54,6 +52,6 @@ def primaries(eta, dose, usable, frames, start, count, times, table, mean, varia
         for j in range(eta.shape[1]):
             if usable[i, j]:
                 p = i * eta.shape[1] + j
-                _, mean[i, j], variance[i, j] = _pixel(
+                _, mean[i, j], variance[i, j] = pixel(
                     p, lam[j], eta[i, j], frames, start, count, times, table
                 )

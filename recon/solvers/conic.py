@@ -44,21 +44,21 @@ def conic(problem: Problem, start: np.ndarray, tolerance: float) -> Iterator[Sta
         constraints = [*constraints, x <= high]
     task = cp.Problem(cp.Minimize(total), constraints)
     precision = max(min(1e-3 * tolerance, 1e-8), 1e-12)
+    options = {"tol_gap_rel": precision, "tol_gap_abs": precision, "tol_feas": precision}
+    failed = State(0, start, np.inf, -np.inf, np.inf, Status.SOLVER_FAILED)
     try:
-        task.solve(
-            solver=cp.CLARABEL, tol_gap_rel=precision, tol_gap_abs=precision, tol_feas=precision
-        )
+        data, chain, inverse = task.get_problem_data(cp.CLARABEL, solver_opts=options)
+        answer = chain.solve_via_data(task, data, solver_opts=options)
+        task.unpack_results(answer, chain, inverse)
     except cp.SolverError:
-        yield State(0, start, np.inf, -np.inf, np.inf, Status.SOLVER_FAILED)
+        yield failed
         return
     if x.value is None or task.status not in (cp.OPTIMAL, cp.OPTIMAL_INACCURATE):
-        yield State(0, start, np.inf, -np.inf, np.inf, Status.SOLVER_FAILED)
+        yield failed
         return
-    stats = task.solver_stats
-    answer = stats.extra_stats
     objective = float(task.value)
-    # The solver's own objective differs from ours by the constant terms.
+    # The solver's own objective leaves out the constant terms.
     dual_value = objective - float(answer.obj_val - answer.obj_val_dual)
     image = np.clip(x.value, low, high)
     gap = relative_gap(objective, min(dual_value, objective), image.size)
-    yield State(int(stats.num_iters), image, objective, dual_value, gap)
+    yield State(int(answer.iterations), image, objective, dual_value, gap)

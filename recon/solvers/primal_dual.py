@@ -20,10 +20,9 @@ from collections.abc import Iterator, Sequence
 
 import numpy as np
 
-from priors.contract import Block
 from recon.diagnostics import relative_gap
 from recon.likelihoods.contract import Likelihood
-from recon.problem import Problem
+from recon.problem import Block, Problem
 from recon.solvers.contract import State, Unsuitable
 
 RELAXATION = 1.9

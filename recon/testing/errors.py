@@ -41,6 +41,14 @@ def require_close(
     _require_no_excess(subject, claim, got, expected, excess, "", x)
 
 
+def require_finite(subject: object, claim: str, got: np.ndarray, x: ArrayLike | None = None) -> None:
+    """Raise ConformanceError unless every number is finite, naming the first place."""
+    bad = np.argwhere(~np.isfinite(got))
+    if bad.size:
+        place = tuple(bad[0])
+        fail(subject, claim, f"{got[place]:.9g}", "a finite number", _point(place, got.shape, x))
+
+
 def require_at_most(
     subject: object, claim: str, got: ArrayLike, limit: ArrayLike, allowed: ArrayLike = 0.0,
     x: ArrayLike | None = None,
@@ -60,8 +68,11 @@ def _require_no_excess(
     if not np.any(excess > 0.0):
         return
     place = np.unravel_index(int(np.argmax(excess)), excess.shape)
-    where = f"pixel ({', '.join(str(int(i)) for i in place)})" if place else ""
+    fail(subject, claim, f"{got[place]:.9g}", f"{relation}{expected[place]:.9g}", _point(place, got.shape, x))
+
+
+def _point(place: tuple, shape: tuple[int, ...], x: ArrayLike | None) -> str:
+    parts = [f"pixel ({', '.join(str(int(i)) for i in place)})"] if place else []
     if x is not None:
-        image = np.broadcast_to(x, got.shape)
-        where += f"{', ' if where else ''}x = {float(image[place]):.9g}"
-    fail(subject, claim, f"{got[place]:.9g}", f"{relation}{expected[place]:.9g}", where)
+        parts.append(f"x = {float(np.broadcast_to(x, shape)[place]):.9g}")
+    return ", ".join(parts)

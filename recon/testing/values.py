@@ -6,7 +6,7 @@ import numpy as np
 
 from recon.likelihoods.contract import Likelihood
 from recon.testing import points
-from recon.testing.errors import require, require_at_most, require_close
+from recon.testing.errors import require, require_at_most, require_close, require_finite
 
 ROUNDING = 1e-9
 PAIRS = 40
@@ -56,33 +56,30 @@ def _map(likelihood: Likelihood, name: str, x: np.ndarray) -> np.ndarray:
     got = getattr(likelihood, name)(x)
     found, expected = f"{got.dtype} {got.shape}", f"float64 {x.shape}"
     require(found == expected, likelihood, f"{name} has the wrong type or shape", found, expected)
-    require_close(likelihood, f"{name} is not finite inside the domain", got, got, np.where(np.isfinite(got), 0, -1), x)
+    require_finite(likelihood, f"{name} is not finite inside the domain", got, x)
     return got
 
 
 def check_perfect_fit(likelihood: Likelihood, rng: np.random.Generator) -> None:
-    """Check that no image beats the estimate, and that value is zero there unless the domain is in the way.
+    """Check that no image within the default bounds beats the estimate, and that a perfect fit has value zero.
 
-    A pixel whose best fit lies beyond the span (every trial detected, fewer detections than background)
-    has to stop somewhere, and is let off.
+    A pixel whose best fit lies beyond the bounds (every trial detected, fewer detections than the
+    background gives) has to stop somewhere, and is let off the first.
     """
-    low, high = (points.inside(likelihood, np.full(likelihood.shape, end)) for end in points.span(likelihood))
-    data = likelihood.has_data & (likelihood.gradient(low) <= 0.0) & (likelihood.gradient(high) >= 0.0)
+    low, high = likelihood.default_bounds
+    ends = [np.clip(points.inside(likelihood, np.full(likelihood.shape, end)), low, high) for end in (low, high)]
+    inner = (likelihood.gradient(ends[0]) <= 0.0) & (likelihood.gradient(ends[1]) >= 0.0)
     estimate = likelihood.estimate().astype(np.float64)
-    deviance, gradient = likelihood.value_map(estimate), likelihood.gradient(estimate)
-    information = np.maximum(likelihood.curvature(estimate), likelihood.fisher_information(estimate))
+    deviance = likelihood.value_map(estimate)
     for x in points.images(likelihood, rng):
-        rival = likelihood.value_map(x)
-        require_at_most(
-            likelihood, "estimate fits worse than another image", deviance[data], rival[data],
-            1e-5 * (1.0 + rival[data]), estimate[data],
-        )
+        rival = np.where(inner, likelihood.value_map(np.clip(x, *ends)), np.inf)
+        claim = "estimate fits worse than another image"
+        require_at_most(likelihood, claim, deviance, rival, 1e-5 * (1.0 + deviance), estimate)
     with np.errstate(invalid="ignore"):
-        stationary = likelihood.has_data & (np.abs(gradient) <= 1e-3 * np.sqrt(information))
-    require_close(
-        likelihood, "value_map is not zero at a perfect fit", deviance[stationary], 0.0, 1e-5,
-        estimate[stationary],
-    )
+        information = np.maximum(likelihood.curvature(estimate), likelihood.fisher_information(estimate))
+        stationary = np.abs(likelihood.gradient(estimate)) <= 1e-3 * np.sqrt(information)
+    perfect = np.where(likelihood.has_data & stationary, deviance, 0.0)
+    require_close(likelihood, "value_map is not zero at a perfect fit", perfect, 0.0, 1e-5, estimate)
 
 
 def check_missing_pixels(likelihood: Likelihood, rng: np.random.Generator) -> None:

@@ -115,6 +115,20 @@ class ProxStep(LogVariance):
         return super().prox(v, 1.01 * step)
 
 
+class StepLength(LogVariance):
+    complaint = "proximal_step leaves another x"
+
+    def proximal_step(self, x, adjoint, extrapolated, step, relaxation, low, high):
+        super().proximal_step(x, adjoint, extrapolated, 1.01 * step, relaxation, low, high)
+
+
+class StepRelaxation(LogVariance):
+    complaint = "proximal_step leaves another x"
+
+    def proximal_step(self, x, adjoint, extrapolated, step, relaxation, low, high):
+        super().proximal_step(x, adjoint, extrapolated, step, 1.0, low, high)
+
+
 class StepWithoutClip(LogVariance):
     complaint = "proximal_step leaves another x"
 

@@ -1,0 +1,66 @@
+"""What a task returns: images in physical units."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+
+from recon.problem import Prior
+from recon.diagnostics import Diagnostics, Status
+
+
+@dataclass(frozen=True, eq=False)
+class PhysicalImage:
+    """An image in a physical unit, with its uncertainty and how it was solved for.
+
+    image: float32 (rows, columns), in `unit`.
+    unit: SI unit, "1" for a ratio.
+    uncertainty: float32 standard uncertainty of each pixel, in `unit`.
+    filled: boolean map, True where the pixel has no usable data and the prior alone fills it in.
+    priors: the priors used, with their weights.
+    bounds: the bounds used.
+    status, diagnostics: how the solve ended.
+    """
+
+    image: np.ndarray
+    unit: str
+    uncertainty: np.ndarray
+    filled: np.ndarray
+    priors: tuple[Prior, ...]
+    bounds: tuple[float, float]
+    status: Status
+    diagnostics: Diagnostics
+
+
+@dataclass(frozen=True, eq=False)
+class Reconstruction:
+    """The images an acquisition allows; the others are None.
+
+    reflectivity: ratio, from counts or time tags.
+    depth: range in metres, from time tags.
+    electron_yield: detected secondary electrons per primary particle, from frames.
+    """
+
+    reflectivity: PhysicalImage | None = None
+    depth: PhysicalImage | None = None
+    electron_yield: PhysicalImage | None = None
+
+    @property
+    def images(self) -> Mapping[str, PhysicalImage]:
+        """The images that there are, by name."""
+        named = {
+            "reflectivity": self.reflectivity, "depth": self.depth, "electron_yield": self.electron_yield,
+        }  # fmt: skip
+        return {name: image for name, image in named.items() if image is not None}
+
+    @property
+    def diagnostics(self) -> Mapping[str, Diagnostics]:
+        """The diagnostics of every image, by name."""
+        return {name: image.diagnostics for name, image in self.images.items()}
+
+    @property
+    def converged(self) -> bool:
+        """Whether every image came within the tolerance."""
+        return all(image.status is Status.CONVERGED for image in self.images.values())

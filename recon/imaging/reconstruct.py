@@ -1,0 +1,59 @@
+"""From an acquisition to its images, in one call."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+
+from recon.acquisition import Counts, Frames, TimeTags
+from recon.errors import InputError
+from recon.imaging.image import Reconstruction
+from recon.imaging.task import Effort
+from recon.problem import Prior, Sum
+from recon.solvers import State
+
+
+def reconstruct(
+    acquisition: Counts | TimeTags | Frames, prior: Prior | Sum | None = None, *,
+    reflectivity_prior: Prior | Sum | None = None, tolerance: float = 1e-4, max_iterations: int = 10_000,
+    callback: Callable[[str, State], object] | None = None,
+) -> Reconstruction:
+    """Return the images that the acquisition allows, each with its uncertainty and its certificate.
+
+    Counts give `.reflectivity`; TimeTags give `.reflectivity` and `.depth`; Frames give `.electron_yield`.
+
+    prior: the prior of the image (of the depth image, for TimeTags), for example
+        priors.GeneralizedVariation(). Total variation if left out. A weight that is left out is
+        set by a rule of thumb from the data (`recon.weights`).
+    reflectivity_prior: the prior of the reflectivity image for TimeTags; total variation if left out.
+    tolerance, max_iterations: see `recon.solve`.
+    callback: called with the name of the image and the state, as solving goes on; True stops that image.
+
+    Raises InputError for an argument that cannot be used.
+    """
+    for name, given in (("prior", prior), ("reflectivity_prior", reflectivity_prior)):
+        if not (given is None or isinstance(given, Prior | Sum)):
+            raise InputError(
+                f"{name} is a {type(given).__name__}; give a prior such as priors.TotalVariation(), or leave it out."
+            )
+    if reflectivity_prior is not None and not isinstance(acquisition, TimeTags):
+        raise InputError("reflectivity_prior is for TimeTags; for other acquisitions give prior.")
+    effort = Effort(tolerance, max_iterations, callback)
+    if isinstance(acquisition, Counts):
+        from recon.imaging.reflectivity import reflectivity
+
+        return Reconstruction(reflectivity=reflectivity(acquisition, prior, effort))
+    if isinstance(acquisition, Frames):
+        from recon.imaging.electron_yield import electron_yield
+
+        return Reconstruction(electron_yield=electron_yield(acquisition, prior, effort))
+    if isinstance(acquisition, TimeTags):
+        from recon.imaging.depth import depth
+        from recon.imaging.reflectivity import reflectivity
+
+        brightness = reflectivity(acquisition.counts(), reflectivity_prior, effort)
+        return Reconstruction(
+            reflectivity=brightness, depth=depth(acquisition, brightness.image, prior, effort)
+        )
+    raise InputError(
+        f"acquisition is a {type(acquisition).__name__}; give recon.Counts, recon.TimeTags or recon.Frames."
+    )

@@ -1,0 +1,50 @@
+"""The step that every kind of image shares: weigh the prior, solve, say how good every pixel is."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+
+from recon.imaging.image import PhysicalImage
+from recon.likelihoods.contract import Likelihood
+from recon.problem import Prior, Problem, Sum, default_prior
+from recon.solvers import State, solve
+from recon.uncertainty import local_uncertainty
+from recon.weights import weigh
+
+
+@dataclass(frozen=True)
+class Effort:
+    """How closely to solve, and whom to tell; see `recon.solve`."""
+
+    tolerance: float = 1e-4
+    max_iterations: int = 10_000
+    callback: Callable[[str, State], object] | None = None
+    """Called with the name of the image and the state."""
+
+
+def image_of(
+    name: str, likelihood: Likelihood, prior: Prior | Sum | None, unit: str, effort: Effort,
+    start: np.ndarray | None = None,
+) -> PhysicalImage:
+    """Return the image that minimises likelihood + prior within the likelihood's default bounds."""
+    terms = weigh(default_prior() if prior is None else prior, likelihood)
+    problem = Problem(likelihood, terms)
+    told = effort.callback
+    solution = solve(
+        problem, solver="conic" if any(term.conic_only for term in terms) else None,
+        tolerance=effort.tolerance, max_iterations=effort.max_iterations, start=start,
+        callback=None if told is None else lambda state: told(name, state),
+    )
+    return PhysicalImage(
+        image=solution.image,
+        unit=unit,
+        uncertainty=local_uncertainty(likelihood, solution.image, problem.bounds),
+        filled=~likelihood.has_data,
+        priors=problem.priors,
+        bounds=problem.bounds,
+        status=solution.status,
+        diagnostics=solution.diagnostics,
+    )

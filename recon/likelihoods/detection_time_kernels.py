@@ -1,0 +1,116 @@
+"""Compiled passes over tags and pixels for L(z) = -sum over tags of log(p(y - z) + noise), noise > 0.
+
+y are the tags' ranges, those of pixel q at start[q] to start[q + 1], ascending; noise (rows, columns) is
+the background per metre over the expected signal; low, step, pieces, period describe p (`RangePulse`).
+All sums are float64; the cost is linear in the number of tags.
+"""
+
+from __future__ import annotations
+
+import math
+
+import numba
+import numpy as np
+from numba import prange
+
+from recon.kernels import COMPILE
+
+
+@numba.njit(inline="always", **COMPILE)
+def turned(u, low, period):
+    """Return u moved by whole periods into [low, low + period)."""
+    u -= period * math.floor((u - low) / period)
+    return low if u >= low + period else u  # where rounding lifted it to the end
+
+
+@numba.njit(inline="always", **COMPILE)
+def density(u, low, step, pieces):
+    """Return p, p' and p'' at u in [low, low + period)."""
+    x = (u - low) / step
+    cell = int(x)
+    if cell >= pieces.shape[0]:
+        return 0.0, 0.0, 0.0
+    v = x - cell
+    c = pieces[cell]
+    p = c[0] + v * (c[1] + v * (c[2] + v * (c[3] + v * (c[4] + v * c[5]))))
+    slope = c[1] + v * (2.0 * c[2] + v * (3.0 * c[3] + v * (4.0 * c[4] + v * 5.0 * c[5])))
+    bend = 2.0 * c[2] + v * (6.0 * c[3] + v * (12.0 * c[4] + v * 20.0 * c[5]))
+    return max(p, 0.0), slope / step, bend / (step * step)
+
+
+@numba.njit(parallel=True, **COMPILE)
+def ranges(time, start, columns, delay, metres, period):
+    """Return the tags' ranges in [0, period), ascending within each pixel; delay has a row or (1, 1)."""
+    y = np.empty(time.size)
+    for i in prange((start.size - 1) // columns):
+        for j in range(columns):
+            q = i * columns + j
+            late = delay[0, 0] if delay.size == 1 else delay[i, j]
+            for k in range(start[q], start[q + 1]):
+                y[k] = turned(metres * (time[k] - late), 0.0, period)
+            if start[q + 1] > start[q] + 1:
+                y[start[q] : start[q + 1]].sort()
+    return y
+
+
+@numba.njit(parallel=True, **COMPILE)
+def excess(z, y, start, noise, used, low, step, pieces, period, out):
+    """Write the sum over tags of log(1 + p / noise), in pixels that are used."""
+    rows, columns = used.shape
+    for i in prange(rows):
+        for j in range(columns):
+            if used[i, j]:
+                q = i * columns + j
+                total = 0.0
+                for k in range(start[q], start[q + 1]):
+                    p = density(turned(y[k] - z[i, j], low, period), low, step, pieces)[0]
+                    total += math.log1p(p / noise[i, j])
+                out[i, j] = total
+
+
+@numba.njit(parallel=True, **COMPILE)
+def derivatives(z, y, start, noise, used, share, low, step, pieces, period, gradient, curvature, signal):
+    """Write dL/dz, d2L/dz2, and the sum over tags of (p + share noise) / (p + noise), in pixels that are used."""
+    rows, columns = used.shape
+    for i in prange(rows):
+        for j in range(columns):
+            if used[i, j]:
+                q = i * columns + j
+                first, second, weight = 0.0, 0.0, 0.0
+                for k in range(start[q], start[q + 1]):
+                    u = turned(y[k] - z[i, j], low, period)
+                    p, slope, bend = density(u, low, step, pieces)
+                    total = p + noise[i, j]
+                    pull = slope / total
+                    first += pull
+                    second += pull * pull - bend / total
+                    weight += (p + share * noise[i, j]) / total
+                gradient[i, j], curvature[i, j], signal[i, j] = first, second, weight
+
+
+@numba.njit(parallel=True, **COMPILE)
+def information(z, y, start, noise, used, stride, interval, low, step, pieces, period, out):
+    """Write the sum over tags of the expected curvature of one tag.
+
+    A tag's expected curvature is the mean of (p' / (p + noise))^2 over its own density, (p + noise) /
+    (1 + noise period): a sum over the places that a coarse clock allows it, else an integral by the trapezoid rule.
+    """
+    rows, columns = used.shape
+    high = low + step * pieces.shape[0]
+    for i in prange(rows):
+        for j in range(columns):
+            if used[i, j]:
+                q = i * columns + j
+                total = 0.0
+                for k in range(start[q], start[q + 1]):
+                    u = low
+                    if interval:
+                        u += turned(y[k] - z[i, j] - low, 0.0, stride)
+                    while u < high:
+                        p, slope, _ = density(u, low, step, pieces)
+                        total += slope * slope / (p + noise[i, j])
+                        u += stride
+                    if not interval:  # all tags alike
+                        total *= start[q + 1] - start[q]
+                        break
+                out[i, j] = total * stride / (1.0 + noise[i, j] * period)

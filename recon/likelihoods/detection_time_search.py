@@ -1,0 +1,133 @@
+"""The range that fits the tags of a pixel best: the global maximum of sum over tags of log(1 + p(y - z) / noise).
+
+Ascents start at every tag and halfway between neighbours, by Newton's rule with halved steps. A start is
+skipped where all tags that can see it, each at the pulse's peak, would not reach the best found so far.
+Tags are sorted, so an ascent looks only at those within the pulse's length.
+"""
+
+from __future__ import annotations
+
+import math
+
+import numba
+import numpy as np
+from numba import prange
+
+from recon.kernels import COMPILE
+from recon.likelihoods.detection_time_kernels import density
+
+FAINT = 1e-3  # of the noise; a tag where p is lower counts as out of sight when starts are skipped
+STEPS = 60  # of one ascent
+
+
+@numba.njit(parallel=True, **COMPILE)
+def best(y, start, noise, used, mode, core, low, step, pieces, period, z, excess):
+    """Write the best range, in [0, period), and the maximum, in pixels that are used and have a tag.
+
+    mode: where p is largest; core: a length that an ascent's step does not exceed.
+    """
+    rows, columns = used.shape
+    for i in prange(rows):
+        for j in range(columns):
+            q = i * columns + j
+            if used[i, j] and start[q + 1] > start[q]:
+                tags = y[start[q] : start[q + 1]]
+                z[i, j], excess[i, j] = _best_of(tags, noise[i, j], mode, core, low, step, pieces, period)
+
+
+@numba.njit(**COMPILE)
+def _best_of(tags, noise, mode, core, low, step, pieces, period):
+    high = low + step * pieces.shape[0]
+    n = tags.size
+    at, top = tags[0] - mode, -1.0
+    last = -math.inf
+    for k in range(n if n > 1 else 0):  # the best tag, to begin with a high bar
+        if tags[k] - last >= 0.25 * core:
+            last = tags[k]
+            value = _sums(tags, tags[k] - mode, noise, low, high, step, pieces, period)[0]
+            if value > top:
+                at, top = tags[k] - mode, value
+    at, top = _ascend(tags, at, noise, core, low, high, step, pieces, period)
+    if n > 1:
+        peak = math.log1p(density(mode, low, step, pieces)[0] / noise)
+        left, right = _sight(noise, low, step, pieces)
+        last = -math.inf
+        for k in range(2 * n):
+            here = tags[k // 2]
+            if k % 2:
+                following = tags[0] + period if k == 2 * n - 1 else tags[k // 2 + 1]
+                here = 0.5 * (here + following)
+            here -= mode
+            if here - last < 0.25 * core:
+                continue
+            last = here
+            if k % 2 and following - mode - here > 0.5 * (right - left):
+                continue  # neither neighbour sees the other's half
+            seen = _locate(tags, here + right + core, period) - _locate(tags, here + left - core, period)
+            if min(seen, n) * peak + FAINT * n > top:
+                place, value = _ascend(tags, here, noise, core, low, high, step, pieces, period)
+                if value > top:
+                    at, top = place, value
+    return at - period * math.floor(at / period), top
+
+
+@numba.njit(**COMPILE)
+def _ascend(tags, z, noise, core, low, high, step, pieces, period):
+    """Climb from z to a local maximum; return its place and value."""
+    value, slope, bend = _sums(tags, z, noise, low, high, step, pieces, period)
+    for _ in range(STEPS):
+        move = slope / bend if bend > 0.0 else math.copysign(core, slope)
+        move = min(max(move, -core), core)
+        while True:
+            if abs(move) < 1e-10 * core:
+                return z, value
+            reached, new_slope, new_bend = _sums(tags, z + move, noise, low, high, step, pieces, period)
+            if reached >= value:
+                break
+            move *= 0.5
+        z, value, slope, bend = z + move, reached, new_slope, new_bend
+    return z, value
+
+
+@numba.njit(**COMPILE)
+def _sums(tags, z, noise, low, high, step, pieces, period):
+    """Return the sum over tags of log(1 + p / noise), its slope, and minus its second derivative."""
+    n = tags.size
+    k = _locate(tags, z + low, period)
+    turns = k // n
+    k -= turns * n
+    shift = turns * period - z
+    value, slope, bend = 0.0, 0.0, 0.0
+    for _ in range(n):
+        u = tags[k] + shift
+        if u >= high:
+            break
+        p, first, second = density(max(u, low), low, step, pieces)
+        total = p + noise
+        pull = first / total
+        value += math.log1p(p / noise)
+        slope -= pull
+        bend += pull * pull - second / total
+        k += 1
+        if k == n:
+            k = 0
+            shift += period
+    return value, slope, bend
+
+
+@numba.njit(**COMPILE)
+def _locate(tags, place, period):
+    """Return how many tags, repeated every period without end, lie below a place (less those below 0)."""
+    turns = math.floor(place / period)
+    return int(turns) * tags.size + np.searchsorted(tags, place - turns * period)
+
+
+@numba.njit(**COMPILE)
+def _sight(noise, low, step, pieces):
+    """Return the ends of the part of the pulse that stands out of the noise."""
+    first, last = 0, pieces.shape[0]
+    while first < last and pieces[first, 0] < FAINT * noise:
+        first += 1
+    while last > first and pieces[last - 1, 0] < FAINT * noise:
+        last -= 1
+    return low + step * first, low + step * last

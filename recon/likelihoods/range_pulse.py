@@ -1,0 +1,172 @@
+"""The pulse as a smooth density of range, tabulated for compiled kernels.
+
+A tag at time t is a signal from range z with density p(y - z) per metre, where y is the range whose
+echo would arrive at t. p is periodic with the unambiguous range; where the pulse or the interval of a coarse
+clock is so long that neighbouring periods overlap, the table holds their sum.
+
+The table is p = (masses on a fine grid) * (Gaussian), averaged over the interval of the clock:
+
+- a Gaussian pulse is one mass and its own Gaussian, hence exact;
+- a sampled pulse is smoothed by a Gaussian a tenth as wide as its core (which adds 1 % to the variance
+  of a Gaussian). Straight lines between samples have corners, and steps at their ends, at which the likelihood of
+  depth would have no curvature, and majorise-minimise nothing to hold on to.
+
+Between knots p is the polynomial of degree 5 that takes the exact p, p' and p'' at both ends, so that
+p'' is continuous.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+from scipy.special import ndtr
+
+from recon.acquisition.pulses import GaussianPulse, SampledPulse
+from recon.acquisition.time_tags import SPEED_OF_LIGHT
+from recon.errors import InputError
+
+if TYPE_CHECKING:
+    from recon.acquisition.time_tags import TimeTags
+
+KNOTS = 16  # knots in the rms of the Gaussian
+REACH = 12.0  # rms of the Gaussian to which the table extends; exp(-REACH^2 / 2) is below any background
+SMOOTHING = 0.1  # rms of the Gaussian over that of a sampled pulse's core
+LARGEST = 1 << 20  # knots
+
+
+@dataclass(frozen=True, eq=False)
+class RangePulse:
+    """p(u), u in metres from `low` to `low + step * len(pieces)`, zero elsewhere within the period.
+
+    pieces: (cells, 6), coefficients of p(low + step (cell + v)) in powers of v, 0 <= v < 1; 1/m.
+    period: the unambiguous range, m.
+    interval: width in m of the interval a tag stands for; 0 = exact tags.
+    resolution: rms in m of the finest detail of p.
+    peak: the largest p, 1/m.
+    core: m; the rms of the Gaussian whose square has the same integral.
+    log_concave: whether log p is concave with -(log p)'' <= 1 / resolution^2.
+    """
+
+    low: float
+    step: float
+    pieces: np.ndarray
+    period: float
+    interval: float
+    resolution: float
+    peak: float
+    core: float
+    log_concave: bool
+
+    def sharpest(self, floor: np.ndarray) -> np.ndarray:
+        """Return the largest -(log(p + c))'' over u, 1/m^2, for every floor c > 0 (1/m)."""
+        p, slope, bend = self.pieces[:, 0], self.pieces[:, 1] / self.step, 2.0 * self.pieces[:, 2] / self.step**2
+        least = float(floor.min())
+        node = (10.0 * np.log(floor / least)).astype(np.intp)  # the one below: a lower floor bends more
+        floors = least * np.exp(0.1 * np.arange(node.max() + 1))
+        largest = [float(np.max((slope / (p + c)) ** 2 - bend / (p + c))) for c in floors]
+        return 1.01 * np.asarray(largest)[node]
+
+
+def range_pulse(tags: TimeTags) -> RangePulse:
+    """Return the pulse of an acquisition as a density of range.
+
+    Raises InputError if a sampled pulse is too long for its detail to be tabulated.
+    """
+    metres = SPEED_OF_LIGHT / (2.0 * tags.refractive_index)
+    period = tags.unambiguous_range
+    interval = 0.0 if tags.interval is None else metres * tags.interval
+    if isinstance(tags.pulse, GaussianPulse):
+        resolution = metres * tags.pulse.rms
+        first, length = 0.0, 0.0
+    else:
+        resolution = SMOOTHING * metres * _core(tags.pulse)
+        first = metres * tags.pulse.support[0]
+        length = metres * tags.pulse.support[1] - first
+    step = resolution / KNOTS
+    whole = length + 2.0 * REACH * resolution + interval
+    if whole > period:  # knots must then fall on each other from period to period
+        step = period / (4 * math.ceil(period / (4.0 * step)))
+    if whole > LARGEST * step:
+        raise InputError(
+            f"pulse spans {whole / resolution:.3g} times its finest detail; cut the samples of its tail to"
+            " fewer than 60000 times."
+        )
+    masses, first = _masses(tags.pulse, metres, first, length, step)
+    kernel = _kernel(resolution, interval, step)
+    knots = np.array([np.convolve(masses, part) for part in kernel])
+    low = first - step * (kernel.shape[1] // 2)
+    pieces = _pieces(_folded(knots, round(period / step)) if whole > period else knots, step, whole > period)
+    core = 1.0 / (2.0 * math.sqrt(math.pi) * step * float(np.sum(pieces[:, 0] ** 2)))
+    return RangePulse(
+        low, step, pieces, period, interval, resolution, float(pieces[:, 0].max()), core,
+        isinstance(tags.pulse, GaussianPulse),
+    )  # fmt: skip
+
+
+def _core(pulse: SampledPulse) -> float:
+    """The rms (s) of the Gaussian whose squared density has the same integral as the pulse's."""
+    density = pulse.density(pulse.times)
+    left, right = density[:-1], density[1:]
+    square = np.sum(np.diff(pulse.times) * (left * left + left * right + right * right)) / 3.0
+    return float(1.0 / (2.0 * math.sqrt(math.pi) * square))
+
+
+def _masses(
+    pulse: GaussianPulse | SampledPulse, metres: float, first: float, length: float, step: float
+) -> tuple[np.ndarray, float]:
+    """Return the pulse before smoothing as masses, one a step, and the place of the first."""
+    if isinstance(pulse, GaussianPulse):
+        return np.ones(1), 0.0
+    edges = first + step * np.arange(math.ceil(length / step) + 1)
+    masses = np.maximum(np.diff(pulse.cumulative(edges / metres)), 0.0)
+    return masses / masses.sum(), first + 0.5 * step
+
+
+def _kernel(rms: float, interval: float, step: float) -> np.ndarray:
+    """Return the Gaussian averaged over the interval, and its first two derivatives, at multiples of step."""
+    half = math.ceil((REACH * rms + 0.5 * interval) / step)
+    u = step * np.arange(-half, half + 1)
+
+    def gaussian(x: np.ndarray) -> np.ndarray:
+        return np.exp(-0.5 * (x / rms) ** 2) / (rms * math.sqrt(2.0 * math.pi))
+
+    if interval == 0.0:
+        p = gaussian(u)
+        return np.array([p, -u / rms**2 * p, (u**2 / rms**2 - 1.0) / rms**2 * p])
+    near, far = np.abs(u) - 0.5 * interval, np.abs(u) + 0.5 * interval
+    share = ndtr(-near / rms) - ndtr(-far / rms)
+    before, after = u - 0.5 * interval, u + 0.5 * interval
+    slope = gaussian(after) - gaussian(before)
+    bend = (before * gaussian(before) - after * gaussian(after)) / rms**2
+    return np.array([share, slope, bend]) / interval
+
+
+def _folded(knots: np.ndarray, cells: int) -> np.ndarray:
+    """Return the knots of one period, all periods summed."""
+    turns = -(-knots.shape[1] // cells)
+    padded = np.zeros((3, turns * cells))
+    padded[:, : knots.shape[1]] = knots
+    return padded.reshape(3, turns, cells).sum(axis=1)
+
+
+def _pieces(knots: np.ndarray, step: float, periodic: bool) -> np.ndarray:
+    """Return the coefficients of the polynomials between the knots (value, slope, bend)."""
+    if periodic:
+        knots = np.concatenate([knots, knots[:, :1]], axis=1)
+    value, slope, half = knots[0], step * knots[1], 0.5 * step**2 * knots[2]
+    rise = np.diff(value)
+    a, b, c, d = slope[:-1], slope[1:], half[:-1], half[1:]
+    return np.stack(
+        [
+            value[:-1],
+            a,
+            c,
+            10.0 * rise - 6.0 * a - 4.0 * b - 3.0 * c + d,
+            -15.0 * rise + 8.0 * a + 7.0 * b + 3.0 * c - 2.0 * d,
+            6.0 * rise - 3.0 * a - 3.0 * b - c + d,
+        ],
+        axis=1,
+    )
