@@ -10,6 +10,8 @@ from priors import generalized_kernels as kernels
 from priors.difference_kernels import squared_distance
 from priors.kernels import bands
 
+RETREATS = 8
+
 if TYPE_CHECKING:
     from priors.generalized_variation import GeneralizedVariation
 
@@ -29,6 +31,9 @@ class GeneralizedBlock:
         self._exists = tuple(np.ascontiguousarray(e[keep]) for e in slopes.exists)
         self._inverse = tuple(np.float32(i) for i in slopes.inverse_spacing)
         self._limits = np.float32(prior.weight), np.float32(prior.weight * prior.second_order)
+        steep = 4.0 * sum(i * i for i in slopes.inverse_spacing)
+        lightest = min((float(w[w > 0.0].min()) for w in self._weights if (w > 0.0).any()), default=1.0)
+        self._rate = np.float32(1.9 * lightest**2 / steep)
         self._bands = bands(shape[0])
         self._marked: tuple[np.ndarray, np.ndarray] | None = None
 
@@ -47,12 +52,19 @@ class GeneralizedBlock:
         )
 
     def certify(self, image: np.ndarray, adjoint: np.ndarray, fresh: bool) -> tuple[float, float]:
-        """See `Block.certify`; the dual point is that of `GeneralizedVariation.feasible`."""
+        """See `Block.certify`; the dual point is near that of `GeneralizedVariation.feasible`.
+
+        A few gradient steps take back most of what the first-order duals would be beyond their disc
+        before the rest is scaled down: it is the worst pixel that decides the scale.
+        """
         first, second = self._limits
-        size = np.sqrt(np.einsum("kij,kij->ij", self.second, self.second))
-        shrink = second / np.maximum(size, second)
-        pull = self._ahead
-        kernels.pull(self.second * shrink, *self._exists, *self._inverse, pull, self._bands)
+        pull, dual = self._ahead, self.second.copy()
+        kernels.retreat(dual, np.zeros_like(pull), *self._exists, *self._inverse, second, self._rate, self._bands)
+        for _ in range(RETREATS):
+            kernels.pull(dual, *self._exists, *self._inverse, pull, self._bands)
+            kernels.excess(pull, *self._weights, first)
+            kernels.retreat(dual, pull, *self._exists, *self._inverse, second, self._rate, self._bands)
+        kernels.pull(dual, *self._exists, *self._inverse, pull, self._bands)
         for part, weights in zip(pull, self._weights, strict=True):
             np.divide(part, weights, out=part, where=weights > 0.0)
         largest = float(np.sqrt(np.max(np.einsum("kij,kij->ij", pull, pull))))

@@ -188,3 +188,41 @@ def penalties(x, v, w_r, w_c, m_r, m_c, inverse_r, inverse_c, bands):
                 bent += np.sqrt(buffer[2, j] ** 2 + buffer[3, j] ** 2 + buffer[4, j] ** 2)
             firsts[i], seconds[i] = total, bent
     return firsts.sum(), seconds.sum()
+
+
+@numba.njit(parallel=True, **COMPILE)
+def excess(pull, w_r, w_c, first):
+    """Turn E' q into 1/o times what the first-order duals it asks for are beyond the disc of radius `first`."""
+    rows, columns = pull.shape[1:]
+    for i in prange(rows):
+        a, b = row(w_r, i), row(w_c, i)
+        for j in range(columns):
+            inverse_a = np.float32(1.0) / a[j] if a[j] > 0.0 else np.float32(0.0)
+            inverse_b = np.float32(1.0) / b[j] if b[j] > 0.0 else np.float32(0.0)
+            asked_r, asked_c = pull[0, i, j] * inverse_a, pull[1, i, j] * inverse_b
+            size = np.sqrt(max(asked_r * asked_r + asked_c * asked_c, first * first))
+            beyond = np.float32(1.0) - first / size
+            pull[0, i, j] = beyond * asked_r * inverse_a
+            pull[1, i, j] = beyond * asked_c * inverse_b
+
+
+@numba.njit(parallel=True, **COMPILE)
+def retreat(q, beyond, m_r, m_c, inverse_r, inverse_c, second, rate, bands):
+    """Move the second-order duals against E beyond, staying in the ball of radius `second`."""
+    rows, columns = q.shape[1:]
+    nothing = np.zeros(columns, np.float32)
+    for band in prange(bands):
+        buffer = np.empty((3, columns), np.float32)
+        for i in range(band * rows // bands, (band + 1) * rows // bands):
+            above = max(i - 1, 0)
+            _second_row(
+                beyond[0, i], beyond[1, i], beyond[0, above], beyond[1, above], _edge(m_r, i, rows, nothing),
+                _edge(m_r, i - 1, rows, nothing), row(m_c, i), _across(m_c, i - 1, nothing),
+                inverse_r, inverse_c, buffer[0], buffer[1], buffer[2],
+            )
+            for j in range(columns):
+                a = q[0, i, j] - rate * buffer[0, j]
+                b = q[1, i, j] - rate * buffer[1, j]
+                c = q[2, i, j] - rate * buffer[2, j]
+                scale = second / np.sqrt(max(a * a + b * b + c * c, second * second))
+                q[0, i, j], q[1, i, j], q[2, i, j] = a * scale, b * scale, c * scale

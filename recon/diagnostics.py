@@ -16,6 +16,10 @@ class Status(Enum):
         "the iteration limit came before the tolerance; the image is the last iterate",
         "raise max_iterations, or start from this image",
     )
+    PRECISION_LIMIT = (
+        "the gap stopped falling where single precision ends; the image is as good as it gets",
+        "ask for a tolerance of 1e-6 or more, or give solver=\"conic\" for a small image",
+    )
     NOT_FINITE = (
         "a value stopped being finite; the image is the last finite iterate",
         "give tighter finite bounds, and check gain and background for extreme values",

@@ -2,11 +2,15 @@
 
 from __future__ import annotations
 
+import os
 from typing import Any
 
-import numba
-import numpy as np
-from numba import prange
+# Threads that wait by spinning slow a loaded machine down tenfold; read when the thread pool first starts.
+os.environ.setdefault("OMP_WAIT_POLICY", "PASSIVE")
+
+import numba  # noqa: E402
+import numpy as np  # noqa: E402
+from numba import prange  # noqa: E402
 
 # Sums may be reordered and contracted for speed; infinities and NaN keep their meaning.
 COMPILE: dict[str, Any] = {

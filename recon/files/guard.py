@@ -133,15 +133,13 @@ class GuardedFile:
 
 
 def _text(item: object, attribute: str) -> str:
-    import h5py
-
     if attribute not in item.attrs:
         raise InputError("is missing; add it, or check that this is an acquisition file")
     stored = item.attrs.get_id(attribute)
-    if not h5py.check_string_dtype(stored.dtype) or stored.shape != ():
-        raise InputError("is not a string; store one there")
-    value = item.attrs[attribute]
-    return value.decode() if isinstance(value, bytes) else str(value)
+    # strings of variable length live in a heap, in which a damaged file can send HDF5 round for ever
+    if stored.dtype.kind != "S" or stored.shape != ():
+        raise InputError("is not a string of fixed length; store one there")
+    return bytes(item.attrs[attribute]).decode()
 
 
 @contextmanager

@@ -32,10 +32,10 @@ def density(u, low, step, pieces):
         return 0.0, 0.0, 0.0
     v = x - cell
     c = pieces[cell]
-    p = c[0] + v * (c[1] + v * (c[2] + v * (c[3] + v * (c[4] + v * c[5]))))
-    slope = c[1] + v * (2.0 * c[2] + v * (3.0 * c[3] + v * (4.0 * c[4] + v * 5.0 * c[5])))
-    bend = 2.0 * c[2] + v * (6.0 * c[3] + v * (12.0 * c[4] + v * 20.0 * c[5]))
-    return max(p, 0.0), slope / step, bend / (step * step)
+    p = math.exp(c[0] + v * (c[1] + v * (c[2] + v * (c[3] + v * (c[4] + v * c[5])))))
+    slope = (c[1] + v * (2.0 * c[2] + v * (3.0 * c[3] + v * (4.0 * c[4] + v * 5.0 * c[5])))) / step
+    bend = (2.0 * c[2] + v * (6.0 * c[3] + v * (12.0 * c[4] + v * 20.0 * c[5]))) / (step * step)
+    return p, p * slope, p * (bend + slope * slope)
 
 
 @numba.njit(parallel=True, **COMPILE)

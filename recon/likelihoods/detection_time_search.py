@@ -126,8 +126,8 @@ def _locate(tags, place, period):
 def _sight(noise, low, step, pieces):
     """Return the ends of the part of the pulse that stands out of the noise."""
     first, last = 0, pieces.shape[0]
-    while first < last and pieces[first, 0] < FAINT * noise:
+    while first < last and math.exp(pieces[first, 0]) < FAINT * noise:
         first += 1
-    while last > first and pieces[last - 1, 0] < FAINT * noise:
+    while last > first and math.exp(pieces[last - 1, 0]) < FAINT * noise:
         last -= 1
     return low + step * first, low + step * last

@@ -18,7 +18,8 @@ from recon.likelihoods.inputs import drawing_image
 from recon.likelihoods.range_pulse import range_pulse
 from recon.validation import NONNEGATIVE, number_or_map
 
-FLOOR = 1e-9  # least background over a period, in expected signal detections: what a pulse's support leaves out
+FLOOR = 1e-6  # least background over a period, in expected signal detections
+MOST = 1e12  # background over signal; beyond it a tag tells nothing
 SHARE = 0.1  # of the background, counted as pulse where the pulse's log has no bounded curvature
 
 
@@ -36,7 +37,7 @@ class DetectionTimes(Likelihood):
     reflectivity: (rows, columns), 0 or more, known. Where gain * reflectivity is 0, tags tell nothing.
     background: expected other detections per trial, a number or a map; None takes that of the tags.
 
-    The background is taken to be at least 1e-9 of the signal. Not convex: `majorise` takes the
+    The background is taken to be at least a millionth of the signal. Not convex: `majorise` takes the
     detections as signal or background with the probabilities they have at z (Dempster, Laird and Rubin
     1977) and bounds minus the log of the pulse by a parabola, which for a Gaussian pulse it is.
 
@@ -59,8 +60,8 @@ class DetectionTimes(Likelihood):
         used = (np.diff(tags.start) > 0).reshape(self.shape) & (signal > 0.0)
         self._used = used if tags.mask is None else used & tags.mask
         with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
-            ratio = np.clip(background / signal, FLOOR, 1.0 / FLOOR)
-        self.noise = np.where(signal > 0.0, ratio, 1.0 / FLOOR) / self.pulse.period
+            ratio = np.clip(background / signal, FLOOR, MOST)
+        self.noise = np.where(signal > 0.0, ratio, MOST) / self.pulse.period
         self.start = tags.start
         self._shape_in_time = tags.pulse
         self._metres = SPEED_OF_LIGHT / (2.0 * tags.refractive_index)
@@ -104,8 +105,7 @@ class DetectionTimes(Likelihood):
 
         pulse = self.pulse
         depth, excess = np.zeros(self.shape), np.zeros(self.shape)
-        mode = pulse.low + pulse.step * int(np.argmax(pulse.pieces[:, 0]))
-        detection_time_search.best(*self._tags, mode, pulse.core, *self._table, depth, excess)
+        detection_time_search.best(*self._tags, pulse.mode, pulse.core, *self._table, depth, excess)
         return depth, excess
 
     @property
@@ -154,7 +154,7 @@ class DetectionTimes(Likelihood):
         from recon.likelihoods import detection_time_kernels as kernels
 
         pulse = self.pulse
-        quadrature = 4.0 * pulse.step  # a quarter of the finest detail
+        quadrature = 2.0 * pulse.step  # a quarter of the finest detail
         coarse = pulse.interval > 0.0
         stride = pulse.interval * max(1.0, quadrature // pulse.interval) if coarse else quadrature
         out = np.zeros(self.shape)

@@ -34,6 +34,12 @@ class FrameTally:
     count: np.ndarray
     times: np.ndarray
 
+    def electrons(self) -> np.ndarray:
+        """Return the sum of the counts of each pixel, (rows * columns,) int64."""
+        total = np.zeros(self.count.size + 1, np.int64)
+        np.cumsum(self.count.astype(np.int64) * self.times, out=total[1:])
+        return np.diff(total[self.start])
+
 
 def tally(counts: np.ndarray, usable: np.ndarray) -> FrameTally:
     """Return the tally of counts (frames, rows, columns), without pairs in pixels that are not usable.

@@ -111,7 +111,7 @@ def _by_primaries(y, lam, eta, log_a):
     """Sum over M of the joint probability of M and y, relative to its largest term."""
     mode = _likeliest(y, log_a)
     width = mode / math.sqrt(y + mode)
-    stride = max(1.0, math.floor(0.6 * width))
+    stride = max(1.0, np.floor(0.7 * width))
     slope = log_a - math.log(mode) + 1.0
     remainder = stirling_remainder(mode)
     total, first, second = 1.0, 0.0, 0.0
@@ -124,7 +124,7 @@ def _by_primaries(y, lam, eta, log_a):
             total += term
             first += term * offset
             second += term * offset * offset
-            if term < _NEGLIGIBLE * total:
+            if not term >= _NEGLIGIBLE * total:  # also ends a sum of NaN
                 break
             offset += direction * stride
     shift = first / total
@@ -141,4 +141,4 @@ def _likeliest(y, log_a):
     for _ in range(4):
         each = math.exp(log_y - log_m)  # electrons per primary
         log_m += (each + log_a - log_m) / (each + 1.0)
-    return max(1.0, round(math.exp(log_m)))
+    return max(1.0, np.rint(math.exp(log_m)))

@@ -71,7 +71,7 @@ def _at(u, electrons, data):
 def _polish(left, u, right, electrons, data):
     """Return the optimum between left, where G < Y, and right, and its value; bisect where Newton leaves."""
     for _ in range(_STEPS):
-        value, excess, derivative = _at(u, electrons, data)
+        _, excess, derivative = _at(u, electrons, data)
         if excess < 0.0:
             left = u
         else:

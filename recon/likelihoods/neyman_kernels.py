@@ -7,14 +7,13 @@ are not usable are left as they are.
 
 from __future__ import annotations
 
-import math
-
 import numba
 import numpy as np
 from numba import prange
 
 from recon.kernels import COMPILE, row
 from recon.likelihoods.neyman import law, posterior
+
 
 @numba.njit(**COMPILE)
 def pixel(p, lam, eta, frames, start, count, times, table):

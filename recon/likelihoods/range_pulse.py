@@ -11,8 +11,8 @@ The table is p = (masses on a fine grid) * (Gaussian), averaged over the interva
   of a Gaussian). Straight lines between samples have corners, and steps at their ends, at which the likelihood of
   depth would have no curvature, and majorise-minimise nothing to hold on to.
 
-Between knots p is the polynomial of degree 5 that takes the exact p, p' and p'' at both ends, so that
-p'' is continuous.
+Between knots log p is the polynomial of degree 5 that takes the exact log p and its first two derivatives at
+both ends (for a Gaussian pulse it is exact throughout).
 """
 
 from __future__ import annotations
@@ -31,9 +31,10 @@ from recon.errors import InputError
 if TYPE_CHECKING:
     from recon.acquisition.time_tags import TimeTags
 
-KNOTS = 16  # knots in the rms of the Gaussian
+KNOTS = 8  # knots in the rms of the Gaussian
 REACH = 12.0  # rms of the Gaussian to which the table extends; exp(-REACH^2 / 2) is below any background
 SMOOTHING = 0.1  # rms of the Gaussian over that of a sampled pulse's core
+EMPTY = 1e-35  # of the peak; a density below it is taken as this
 LARGEST = 1 << 20  # knots
 
 
@@ -41,11 +42,11 @@ LARGEST = 1 << 20  # knots
 class RangePulse:
     """p(u), u in metres from `low` to `low + step * len(pieces)`, zero elsewhere within the period.
 
-    pieces: (cells, 6), coefficients of p(low + step (cell + v)) in powers of v, 0 <= v < 1; 1/m.
+    pieces: (cells, 6), coefficients of log p(low + step (cell + v)) in powers of v, 0 <= v < 1; p in 1/m.
     period: the unambiguous range, m.
     interval: width in m of the interval a tag stands for; 0 = exact tags.
     resolution: rms in m of the finest detail of p.
-    peak: the largest p, 1/m.
+    mode: where p is largest, m, to within a step.
     core: m; the rms of the Gaussian whose square has the same integral.
     log_concave: whether log p is concave with -(log p)'' <= 1 / resolution^2.
     """
@@ -56,17 +57,19 @@ class RangePulse:
     period: float
     interval: float
     resolution: float
-    peak: float
+    mode: float
     core: float
     log_concave: bool
 
     def sharpest(self, floor: np.ndarray) -> np.ndarray:
         """Return the largest -(log(p + c))'' over u, 1/m^2, for every floor c > 0 (1/m)."""
-        p, slope, bend = self.pieces[:, 0], self.pieces[:, 1] / self.step, 2.0 * self.pieces[:, 2] / self.step**2
+        p, slope = np.exp(self.pieces[:, 0]), self.pieces[:, 1] / self.step
+        bend = 2.0 * self.pieces[:, 2] / self.step**2
         least = float(floor.min())
         node = (10.0 * np.log(floor / least)).astype(np.intp)  # the one below: a lower floor bends more
         floors = least * np.exp(0.1 * np.arange(node.max() + 1))
-        largest = [float(np.max((slope / (p + c)) ** 2 - bend / (p + c))) for c in floors]
+        share = (p / (p + c) for c in floors)
+        largest = [float(np.max(-q * (bend + (1.0 - q) * slope**2))) for q in share]
         return 1.01 * np.asarray(largest)[node]
 
 
@@ -88,7 +91,7 @@ def range_pulse(tags: TimeTags) -> RangePulse:
     step = resolution / KNOTS
     whole = length + 2.0 * REACH * resolution + interval
     if whole > period:  # knots must then fall on each other from period to period
-        step = period / (4 * math.ceil(period / (4.0 * step)))
+        step = period / (2 * math.ceil(period / (2.0 * step)))
     if whole > LARGEST * step:
         raise InputError(
             f"pulse spans {whole / resolution:.3g} times its finest detail; cut the samples of its tail to"
@@ -98,12 +101,15 @@ def range_pulse(tags: TimeTags) -> RangePulse:
     kernel = _kernel(resolution, interval, step)
     knots = np.array([np.convolve(masses, part) for part in kernel])
     low = first - step * (kernel.shape[1] // 2)
-    pieces = _pieces(_folded(knots, round(period / step)) if whole > period else knots, step, whole > period)
-    core = 1.0 / (2.0 * math.sqrt(math.pi) * step * float(np.sum(pieces[:, 0] ** 2)))
+    if whole > period:
+        knots = _folded(knots, round(period / step))
+    pieces = _pieces(_logarithm(knots), step)
+    p = np.exp(pieces[:, 0])
+    core = 1.0 / (2.0 * math.sqrt(math.pi) * step * float(np.sum(p * p)))
+    mode = low + step * int(np.argmax(p))
     return RangePulse(
-        low, step, pieces, period, interval, resolution, float(pieces[:, 0].max()), core,
-        isinstance(tags.pulse, GaussianPulse),
-    )  # fmt: skip
+        low, step, pieces, period, interval, resolution, mode, core, isinstance(tags.pulse, GaussianPulse)
+    )
 
 
 def _core(pulse: SampledPulse) -> float:
@@ -145,17 +151,23 @@ def _kernel(rms: float, interval: float, step: float) -> np.ndarray:
 
 
 def _folded(knots: np.ndarray, cells: int) -> np.ndarray:
-    """Return the knots of one period, all periods summed."""
+    """Return the knots of one period, all periods summed, and the first one again."""
     turns = -(-knots.shape[1] // cells)
     padded = np.zeros((3, turns * cells))
     padded[:, : knots.shape[1]] = knots
-    return padded.reshape(3, turns, cells).sum(axis=1)
+    once = padded.reshape(3, turns, cells).sum(axis=1)
+    return np.concatenate([once, once[:, :1]], axis=1)
 
 
-def _pieces(knots: np.ndarray, step: float, periodic: bool) -> np.ndarray:
-    """Return the coefficients of the polynomials between the knots (value, slope, bend)."""
-    if periodic:
-        knots = np.concatenate([knots, knots[:, :1]], axis=1)
+def _logarithm(knots: np.ndarray) -> np.ndarray:
+    """Return log p and its first two derivatives, from p and its."""
+    p, slope, bend = knots
+    p = p + EMPTY * p.max()
+    return np.array([np.log(p), slope / p, bend / p - (slope / p) ** 2])
+
+
+def _pieces(knots: np.ndarray, step: float) -> np.ndarray:
+    """Return the coefficients of the polynomials between knots (value, slope, bend)."""
     value, slope, half = knots[0], step * knots[1], 0.5 * step**2 * knots[2]
     rise = np.diff(value)
     a, b, c, d = slope[:-1], slope[1:], half[:-1], half[1:]

@@ -17,10 +17,11 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Sequence
+from dataclasses import replace
 
 import numpy as np
 
-from recon.diagnostics import relative_gap
+from recon.diagnostics import Status, relative_gap
 from recon.likelihoods.contract import Likelihood
 from recon.problem import Block, Problem
 from recon.solvers.contract import State, Unsuitable
@@ -28,6 +29,7 @@ from recon.solvers.contract import State, Unsuitable
 RELAXATION = 1.9
 WINDOW = 20  # iterations between corrections of the balance
 FADING = 0.8  # each correction is this much weaker than the one before
+ROUNDING = 1e-5  # a gap below this that no longer falls has met single precision
 FIRST_STEP = 0.05  # tau times the mean Fisher information, at the start
 
 
@@ -43,11 +45,16 @@ def primal_dual(
     run = PrimalDual(problem, start, blocks, step)
     iteration, due = 0, WINDOW
     previous: tuple[int, float] | None = None
+    best, improved = math.inf, 0
     while True:
         while iteration < due:
             run.advance()
             iteration += 1
         state = run.measure()
+        if state.relative_gap < 0.9 * best:
+            best, improved = state.relative_gap, iteration
+        elif best < ROUNDING and iteration - improved > max(1000, iteration // 2):
+            state = replace(state, ended=Status.PRECISION_LIMIT)
         yield state
         due = iteration + _until_next(iteration, state.relative_gap, previous, tolerance)
         previous = (iteration, state.relative_gap)

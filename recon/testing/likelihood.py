@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from recon.likelihoods.contract import Likelihood
-from recon.testing import conjugates, derivatives, draws, majorising, points, proximal, values
+from recon.testing import conjugates, derivatives, draws, majorising, points, proximal, proximal_steps, values
 from recon.testing.errors import require
 from recon.testing.expressions import check_expression
 
@@ -49,7 +49,7 @@ def _check_curve(likelihood: Likelihood, rng: np.random.Generator) -> None:
 def _check_convex(likelihood: Likelihood, rng: np.random.Generator) -> None:
     values.check_convexity(likelihood, rng)
     proximal.check_prox(likelihood, rng)
-    proximal.check_proximal_step(likelihood, rng)
+    proximal_steps.check_proximal_step(likelihood, rng)
     conjugates.check_conjugate(likelihood, rng)
     _check_likelihood_expression(likelihood, rng)
 

@@ -1,4 +1,4 @@
-"""Prox of a likelihood against its definition, and the solver's step against the prox."""
+"""Prox of a likelihood against its definition."""
 
 from __future__ import annotations
 
@@ -6,11 +6,9 @@ import numpy as np
 
 from recon.likelihoods.contract import Likelihood
 from recon.testing import points
-from recon.testing.errors import require, require_at_most, require_close
+from recon.testing.errors import require, require_at_most
 
 STEPS = (1e-3, 1e-1, 1.0, 1e2)
-SINGLE = 1e-5
-FAR, NEAR = 0.1, 1e-3
 
 
 def steps(likelihood: Likelihood, x: np.ndarray) -> list[float]:
@@ -73,44 +71,3 @@ def _check_rivals(likelihood: Likelihood, prox: np.ndarray, v: np.ndarray, step:
         claim = f"prox is not the minimiser: a pixel beside it has a lower objective, at step {step:.3g}"
         allowed = 1e-9 * (1.0 + np.abs(reached))
         require_at_most(likelihood, claim, reached, objective(rival), allowed, prox)
-
-
-def check_proximal_step(likelihood: Likelihood, rng: np.random.Generator) -> None:
-    """Check the in-place float32 step against what the contract says it does with the prox.
-
-    A compiled step may iterate from x, if its error vanishes where a solve settles: it may be a tenth
-    (FAR) of a way as long as the image, and a thousandth (NEAR) of a tenth of the minimum's width.
-    """
-    low, high = points.span(likelihood)
-    low, high = 0.9 * low + 0.1 * high, 0.1 * low + 0.9 * high
-    for image in points.images(likelihood, rng):
-        x = np.clip(image, low, high).astype(np.float32)
-        curvature = np.maximum(likelihood.curvature(x), 0.0)
-        for step in steps(likelihood, image):
-            away = rng.standard_normal(x.shape) * (high - low) / step
-            _check_step(likelihood, x, away, step, FAR, (low, high), float(rng.uniform(1.0, 1.9)))
-            width = 1.0 / np.sqrt(curvature + 1.0 / step)
-            target = np.clip(x + 0.1 * width * rng.standard_normal(x.shape), low, high)
-            towards = (x - target) / step - likelihood.gradient(target)
-            _check_step(likelihood, x, towards, step, NEAR, (low, high), float(rng.uniform(1.0, 1.9)))
-
-
-def _check_step(
-    likelihood: Likelihood, x: np.ndarray, adjoint: np.ndarray, step: float, iterated: float,
-    bounds: tuple[float, float], relaxation: float,
-) -> None:
-    start, x, adjoint = x.astype(np.float64), x.copy(), adjoint.astype(np.float32)
-    kept, extrapolated = adjoint.astype(np.float64), np.full_like(x, np.nan)
-    proposed = np.clip(np.asarray(likelihood.prox(start - step * kept, step), np.float64), *bounds)
-    likelihood.proximal_step(x, adjoint, extrapolated, step, relaxation, *bounds)
-    claim = "proximal_step overwrites adjoint"
-    require(np.array_equal(adjoint, kept), likelihood, claim, "other numbers", "the same")
-    size = np.abs(start) + np.abs(proposed) + step * (np.abs(kept) + np.abs(likelihood.gradient(start)))
-    allowed = SINGLE * size + 2.0 * iterated * np.abs(proposed - start)  # both outputs double an error
-    outputs = (
-        ("x", x, start + relaxation * (proposed - start)),
-        ("extrapolated image", extrapolated, 2.0 * proposed - start),
-    )
-    for name, got, expected in outputs:
-        claim = f"proximal_step leaves another {name} than the clipped prox does, at step {step:.3g}"
-        require_close(likelihood, claim, got, expected, allowed, start)

@@ -116,7 +116,7 @@ class ProxStep(LogVariance):
 
 
 class StepLength(LogVariance):
-    complaint = "proximal_step leaves another x"
+    complaint = "than the clipped prox does"
 
     def proximal_step(self, x, adjoint, extrapolated, step, relaxation, low, high):
         super().proximal_step(x, adjoint, extrapolated, 1.01 * step, relaxation, low, high)
@@ -130,7 +130,7 @@ class StepRelaxation(LogVariance):
 
 
 class StepWithoutClip(LogVariance):
-    complaint = "proximal_step leaves another x"
+    complaint = "proximal_step leaves x above its upper bound"
 
     def proximal_step(self, x, adjoint, extrapolated, step, relaxation, low, high):
         super().proximal_step(x, adjoint, extrapolated, step, relaxation, -np.inf, np.inf)

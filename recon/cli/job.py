@@ -1,0 +1,133 @@
+"""From acquisition files to a folder of results; what `demo` and `reconstruct` share."""
+
+from __future__ import annotations
+
+import sys
+from argparse import Namespace
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from priors import Prior
+from recon.cli.progress import SolveProgress
+from recon.cli.version import version
+from recon.files import load, load_note, load_truth
+from recon.files.json_text import json_text, write_json
+from recon.files.tiff import write_tiff
+from recon.imaging import Reconstruction, reconstruct
+from recon.report import words
+from recon.report.data_images import Acquisition, data_image, pixel_by_pixel
+from recon.report.figure import Picture, save_picture
+from recon.report.record import acquisition_record, image_record
+
+
+@dataclass(frozen=True)
+class Settings:
+    """How to reconstruct."""
+
+    prior: Prior | None = None
+    tolerance: float = 1e-4
+    max_iterations: int = 10_000
+
+
+@dataclass(frozen=True, eq=False)
+class Source:
+    """An acquisition file that has been read."""
+
+    name: str
+    acquisition: Acquisition
+    truth: Mapping[str, np.ndarray]
+    note: str
+
+    @classmethod
+    def read(cls, path: Path) -> Source:
+        """Read a file; raises InputError."""
+        return cls(path.name, load(path), load_truth(path), load_note(path))
+
+
+@dataclass
+class Job:
+    """Reconstructs acquisitions one after another and keeps the records of all of them."""
+
+    folder: Path
+    settings: Settings
+    options: Namespace
+    acquisitions: dict[str, dict[str, Any]] = field(default_factory=dict)
+    images: dict[str, dict[str, Any]] = field(default_factory=dict)
+
+    def add(self, source: Source) -> None:
+        """Reconstruct, write the images and show the table."""
+        quiet = self.options.quiet
+        with SolveProgress(self.settings.tolerance, hidden=quiet) as progress:
+            progress.step(f"{source.name}: starting")
+            result = reconstruct(
+                source.acquisition, self.settings.prior, tolerance=self.settings.tolerance,
+                max_iterations=self.settings.max_iterations, callback=progress,
+            )
+            progress.step("writing")
+            records = self._write(source, result)
+        self.images.update(records)
+        if not (quiet or self.options.json):
+            from recon.cli.table import print_summary
+
+            print_summary(source.name, self.acquisitions[source.name], records)
+
+    def finish(self) -> int:
+        """Write diagnostics.json, say where everything is and what is wrong; return the exit code."""
+        record = {
+            "version": version(),
+            "converged": all(words.is_converged(image) for image in self.images.values()),
+            "tolerance": self.settings.tolerance,
+            "acquisitions": self.acquisitions,
+            "images": self.images,
+        }
+        write_json(self.folder / "diagnostics.json", record)
+        if self.options.json:
+            short = {name: _without_trace(image) for name, image in self.images.items()}
+            sys.stdout.write(json_text(record | {"folder": str(self.folder), "images": short}))
+        elif not self.options.quiet:
+            from recon.cli.table import print_line
+
+            print_line(f"Images, pictures and diagnostics.json are in {self.folder}")
+        for name, image in self.images.items():
+            if not words.is_converged(image):
+                status = image["status"]
+                print(
+                    f"fewcount: {words.spelled(name)} is not converged: {status['meaning']};"
+                    f" to do: {status['remedy']}.",
+                    file=sys.stderr,
+                )
+        return 0 if record["converged"] else 1
+
+    def _write(self, source: Source, result: Reconstruction) -> dict[str, dict[str, Any]]:
+        acquisition = acquisition_record(source.acquisition, source.note)
+        self.acquisitions[source.name] = acquisition
+        data = data_image(source.acquisition)
+        alone = pixel_by_pixel(source.acquisition, result)
+        records = {}
+        for name, image in result.images.items():
+            truth = source.truth.get(name)
+            if truth is not None and truth.shape != image.image.shape:
+                truth = None
+            record = image_record(image, truth, alone[name])
+            files = {kind: f"{name}{ending}" for kind, ending in ENDINGS.items()}
+            records[name] = {"acquisition": source.name, "files": files} | record
+            write_tiff(self.folder / files["image"], image.image, name, image.unit)
+            uncertain = f"standard uncertainty of {name}"
+            write_tiff(self.folder / files["uncertainty"], image.uncertainty, uncertain, image.unit)
+            tolerance = self.settings.tolerance
+            picture = Picture(
+                name, image, record, acquisition, data, alone[name], truth, tolerance, source.name
+            )
+            save_picture(self.folder / files["picture"], picture)
+        return records
+
+
+ENDINGS = {"image": ".tif", "uncertainty": "_uncertainty.tif", "picture": ".png"}
+
+
+def _without_trace(record: Mapping[str, Any]) -> dict[str, Any]:
+    return {name: value for name, value in record.items() if name != "trace"}

@@ -1,0 +1,76 @@
+"""Progress bars: how far the relative gap has come down towards the tolerance, on a log scale."""
+
+from __future__ import annotations
+
+import math
+from typing import TYPE_CHECKING
+
+from rich.console import Console
+from rich.progress import BarColumn, Progress, SpinnerColumn, TextColumn, TimeElapsedColumn
+
+from recon.report.words import spelled
+
+if TYPE_CHECKING:
+    from recon.solvers import State
+
+
+class SolveProgress:
+    """A bar on standard error for every image; usable as the callback of `recon.reconstruct`.
+
+    Nothing is shown where standard error is not a terminal.
+    """
+
+    def __init__(self, tolerance: float, hidden: bool = False) -> None:
+        console = Console(stderr=True)
+        self._tolerance = tolerance
+        self._first: dict[str, float] = {}
+        self._tasks: dict[str, int] = {}
+        self._bars = Progress(
+            SpinnerColumn(),
+            TextColumn("{task.description:<16}"),
+            BarColumn(),
+            TextColumn("{task.fields[gap]}"),
+            TimeElapsedColumn(),
+            console=console,
+            transient=True,
+            disable=hidden or not console.is_terminal,
+        )
+        self._now: int | None = None
+
+    def __enter__(self) -> SolveProgress:
+        self._bars.start()
+        return self
+
+    def __exit__(self, *_: object) -> None:
+        self._bars.stop()
+
+    def step(self, words: str) -> None:
+        """Say what is going on, for work that cannot be measured."""
+        self._finish()
+        self._now = self._bars.add_task(words, total=None, gap="")
+
+    def __call__(self, name: str, state: State) -> None:
+        """Show a state of the solve of an image."""
+        if name not in self._tasks:
+            self._finish()
+            self._first[name] = state.relative_gap
+            self._tasks[name] = self._now = self._bars.add_task(spelled(name), total=1.0, gap="")
+        self._bars.update(
+            self._tasks[name],
+            completed=share_done(self._first[name], state.relative_gap, self._tolerance),
+            gap=f"gap {state.relative_gap:.1e} of {self._tolerance:.0e}, iteration {state.iteration}",
+        )
+
+    def _finish(self) -> None:
+        if self._now is not None:
+            self._bars.remove_task(self._now)
+            self._now = None
+
+
+def share_done(first: float, gap: float, tolerance: float) -> float:
+    """Return which share of the way from the first gap to the tolerance is done, by its logarithm, 0 to 1."""
+    if gap <= tolerance:
+        return 1.0
+    if not (math.isfinite(first) and math.isfinite(gap) and first > gap):
+        return 0.0
+    return math.log(first / gap) / math.log(first / tolerance)

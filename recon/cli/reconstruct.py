@@ -1,0 +1,21 @@
+"""fewcount reconstruct"""
+
+from __future__ import annotations
+
+from argparse import Namespace
+from pathlib import Path
+
+from recon.cli.job import Job, Settings, Source
+from recon.cli.output_folder import output_folder
+from recon.cli.prior_names import prior_named
+
+
+def run(options: Namespace) -> int:
+    """Reconstruct an acquisition file; return the exit code."""
+    settings = Settings(prior_named(options.prior, options.weight), options.tolerance, options.max_iterations)
+    source = Source.read(Path(options.file))
+    out = Path("fewcount-out", Path(options.file).stem) if options.out is None else Path(options.out)
+    with output_folder(out) as folder:
+        job = Job(folder, settings, options)
+        job.add(source)
+        return job.finish()

@@ -1,0 +1,74 @@
+"""The summary a person reads on the screen."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from typing import Any
+
+from rich.console import Console
+from rich.table import Table
+from rich.text import Text
+
+from recon.report.words import (
+    data_in_words,
+    is_converged,
+    priors_in_words,
+    quantity,
+    spelled,
+    status_in_words,
+)
+
+Record = Mapping[str, Any]
+
+
+def print_summary(name: str, acquisition: Record, images: Mapping[str, Record]) -> None:
+    """Print what an acquisition holds, and its images side by side."""
+    console = Console(highlight=False)
+    console.print(Text(name, style="bold"), Text(data_in_words(acquisition)), soft_wrap=True)
+    if acquisition["note"]:
+        console.print(Text(acquisition["note"], style="dim"), soft_wrap=True)
+    table = Table("", pad_edge=False)
+    for image in images:
+        table.add_column(spelled(image), overflow="fold")
+    for label, cell in _rows(images.values()):
+        table.add_row(label, *(cell(record) for record in images.values()))
+    console.print(table)
+    console.print()
+
+
+def print_line(text: str) -> None:
+    """Print a line as it is, however long."""
+    Console(highlight=False).print(Text(text), soft_wrap=True)
+
+
+def _rows(records: Any) -> list[tuple[str, Callable[[Record], Text | str]]]:
+    rows: list[tuple[str, Callable[[Record], Text | str]]] = [
+        ("unit", lambda r: "none" if r["unit"] == "1" else r["unit"]),
+        ("range", lambda r: f"{r['range'][0]:.3g} to {quantity(r['range'][1], r['unit'])}"),
+        ("median uncertainty of a pixel alone", lambda r: quantity(r["median_uncertainty"], r["unit"])),
+        ("filled in by the prior", lambda r: f"{r['filled_pixels']} pixels"),
+        ("prior", priors_in_words),
+        ("iterations", lambda r: str(r["iterations"])),
+        ("relative gap", lambda r: f"{r['relative_gap']:.2g}"),
+        ("time", lambda r: f"{r['seconds']:.2f} s"),
+        ("status", _status),
+    ]
+    if any(record["error"] is not None for record in records):
+        rows += [
+            ("rmse against the truth", lambda r: _error(r, "rmse")),
+            ("  conventional, pixel by pixel", lambda r: _error(r, "rmse", "conventional")),
+            ("median absolute error", lambda r: _error(r, "median_absolute")),
+            ("  conventional, pixel by pixel", lambda r: _error(r, "median_absolute", "conventional")),
+        ]
+    return rows
+
+
+def _status(record: Record) -> Text:
+    return Text(status_in_words(record), style="green" if is_converged(record) else "bold white on red")
+
+
+def _error(record: Record, kind: str, of: str | None = None) -> str:
+    error = record["error"]
+    if error is not None and of is not None:
+        error = error.get(of)
+    return quantity(None if error is None else error[kind], record["unit"])

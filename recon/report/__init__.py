@@ -1,0 +1,1 @@
+"""What a person opens: figures, and the record that the summary table and diagnostics.json are made of."""

@@ -1,0 +1,69 @@
+"""Images made without a prior, to lay beside the reconstruction."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from recon.acquisition import Counts, Frames, TimeTags
+from recon.imaging.reflectivity import counting_likelihood
+
+if TYPE_CHECKING:
+    from recon.imaging import Reconstruction
+
+Acquisition = Counts | TimeTags | Frames
+
+
+def detections(acquisition: Acquisition) -> np.ndarray:
+    """Return the number of detections of every pixel, over all its trials or frames."""
+    if isinstance(acquisition, Frames):
+        return acquisition.counts.sum(axis=0, dtype=np.int64)
+    return (acquisition.counts() if isinstance(acquisition, TimeTags) else acquisition).detections
+
+
+@dataclass(frozen=True, eq=False)
+class DataImage:
+    """What was recorded, as an image: float32, NaN where a pixel is not usable; whole where it is numbers."""
+
+    values: np.ndarray
+    label: str
+    whole: bool
+
+
+def data_image(acquisition: Acquisition) -> DataImage:
+    """Return the detections of every pixel, or detections per trial where pixels made different trials."""
+    values, label, whole = detections(acquisition).astype(np.float32), "detections", True
+    if not isinstance(acquisition, Frames) and isinstance(acquisition.trials, np.ndarray):
+        with np.errstate(divide="ignore", invalid="ignore"):
+            values = np.where(acquisition.trials > 0, values / acquisition.trials, np.nan)
+        label, whole = "detections per trial", False
+    if acquisition.mask is not None:
+        values = np.where(acquisition.mask, values, np.nan)
+    return DataImage(values, label, whole)
+
+
+def pixel_by_pixel(acquisition: Acquisition, reconstruction: Reconstruction) -> dict[str, np.ndarray]:
+    """Return the conventional image of every pixel by itself, by name; NaN where it has no data.
+
+    reflectivity: maximum likelihood from the pixel's own detections.
+    depth: maximum likelihood from the pixel's own tags, at the reconstructed reflectivity.
+    electron_yield: electrons over expected primaries.
+    """
+    images = {name: _conventional(name, acquisition, reconstruction) for name in reconstruction.images}
+    for name, image in images.items():
+        image[reconstruction.images[name].filled] = np.nan
+    return images
+
+
+def _conventional(name: str, acquisition: Acquisition, reconstruction: Reconstruction) -> np.ndarray:
+    if isinstance(acquisition, Frames):
+        electrons = detections(acquisition).astype(np.float64)
+        return (electrons / (acquisition.frames * acquisition.dose)).astype(np.float32)
+    if name == "depth":
+        from recon.likelihoods.detection_times import DetectionTimes
+
+        return DetectionTimes(acquisition, reconstruction.reflectivity.image).estimate()
+    counts = acquisition.counts() if isinstance(acquisition, TimeTags) else acquisition
+    return counting_likelihood(counts).estimate()

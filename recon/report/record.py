@@ -1,0 +1,92 @@
+"""What there is to say about a reconstruction, as plain records: the source of the table and of the JSON."""
+
+from __future__ import annotations
+
+import re
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from recon.acquisition import Counts, Frames, TimeTags
+from recon.report.data_images import detections
+
+if TYPE_CHECKING:
+    from recon.imaging import PhysicalImage
+    from recon.problem import Prior
+
+KINDS = {Counts: "counts", TimeTags: "time tags", Frames: "frames"}
+
+
+def acquisition_record(acquisition: Counts | TimeTags | Frames, note: str = "") -> dict[str, Any]:
+    """Return kind, shape, numbers of detections and the note of an acquisition; masked pixels left out."""
+    counts = detections(acquisition)
+    usable = counts if acquisition.mask is None else counts[acquisition.mask]
+    record = {
+        "kind": KINDS[type(acquisition)],
+        "shape": list(acquisition.shape),
+        "detections": int(usable.sum(dtype=np.int64)),
+        "detections_per_pixel": float(usable.mean(dtype=np.float64)),
+        "share_of_pixels_without_detection": float(np.mean(usable == 0)),
+        "note": note,
+    }
+    if isinstance(acquisition, Frames):
+        record["frames"] = acquisition.frames
+    return record
+
+
+def image_record(
+    image: PhysicalImage, truth: np.ndarray | None = None, conventional: np.ndarray | None = None
+) -> dict[str, Any]:
+    """Return all that is known of an image but its pixels.
+
+    truth: the image it was drawn from, where that is known; `error` is then the root mean square error
+        and the median absolute error over all pixels, and those of the conventional image where it has
+        data.
+    """
+    seen = ~image.filled
+    diagnostics = image.diagnostics
+    record = {
+        "unit": image.unit,
+        "shape": list(image.image.shape),
+        "range": [float(image.image.min()), float(image.image.max())],
+        "median_uncertainty": float(np.median(image.uncertainty[seen])) if seen.any() else None,
+        "filled_pixels": int(np.count_nonzero(image.filled)),
+        "priors": [{"name": name_of(prior), "weight": prior.weight} for prior in image.priors],
+        "bounds": list(image.bounds),
+        "status": {
+            "name": image.status.name.lower(),
+            "meaning": image.status.meaning,
+            "remedy": image.status.remedy,
+        },
+        "solver": diagnostics.solver,
+        "objective": diagnostics.objective,
+        "dual_value": diagnostics.dual_value,
+        "relative_gap": diagnostics.relative_gap,
+        "iterations": diagnostics.iterations,
+        "seconds": diagnostics.seconds,
+        "deviance_per_pixel": diagnostics.deviance_per_pixel,
+        "pixels_at_bounds": diagnostics.pixels_at_bounds,
+        "error": None,
+        "trace": {name: list(values) for name, values in vars(diagnostics.trace).items()},
+    }
+    if truth is not None:
+        record["error"] = _error(image.image, truth)
+        if conventional is not None:
+            record["error"]["conventional"] = _error(conventional, truth)
+    return record
+
+
+def name_of(prior: Prior) -> str:
+    """Return the name of a prior as the command line spells it: "total-variation" for a TotalVariation."""
+    return re.sub(r"(?<=[a-z0-9])(?=[A-Z])", "-", type(prior).__name__).lower()
+
+
+def _error(image: np.ndarray, truth: np.ndarray) -> dict[str, float]:
+    difference = np.asarray(image, np.float64) - truth
+    difference = difference[np.isfinite(difference)]
+    if not difference.size:
+        return {"rmse": np.nan, "median_absolute": np.nan}
+    return {
+        "rmse": float(np.sqrt(np.mean(np.square(difference)))),
+        "median_absolute": float(np.median(np.abs(difference))),
+    }

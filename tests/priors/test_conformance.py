@@ -1,0 +1,44 @@
+"""Every prior of ours keeps the contract, on images of several shapes, with spacing, gaps and edge weights."""
+
+import numpy as np
+import pytest
+
+import priors
+from recon.testing import check_prior
+
+SHAPE = (7, 9)
+RNG = np.random.default_rng(4)
+MASK = RNG.random(SHAPE) > 0.2
+EDGES = RNG.uniform(0.2, 1.5, SHAPE)
+EDGES_OF_BOTH = RNG.uniform(0.2, 1.5, (2, *SHAPE))
+SETTINGS = {
+    "plain": {},
+    "spacing": {"spacing": (0.5, 2.0)},
+    "gaps": {"mask": MASK},
+    "edge weights": {"edge_weights": EDGES},
+    "all": {"spacing": (0.02, 0.03), "mask": MASK, "edge_weights": EDGES_OF_BOTH},
+}
+KINDS = {
+    "isotropic": lambda **settings: priors.TotalVariation(0.7, **settings),
+    "anisotropic": lambda **settings: priors.TotalVariation(0.7, isotropic=False, **settings),
+    "second order": lambda **settings: priors.GeneralizedVariation(0.7, **settings),
+    "quadratic": lambda **settings: priors.Smoothness(0.7, **settings),
+}
+
+
+@pytest.mark.parametrize("settings", SETTINGS)
+@pytest.mark.parametrize("kind", KINDS)
+def test_prior_on_differences_keeps_the_contract(kind, settings):
+    check_prior(KINDS[kind](**SETTINGS[settings]), shape=SHAPE)
+
+
+@pytest.mark.parametrize("shape", [(1, 8), (8, 1), (2, 2), (17, 3)])
+@pytest.mark.parametrize("kind", KINDS)
+def test_prior_keeps_the_contract_on_any_shape(kind, shape):
+    check_prior(KINDS[kind](), shape=shape, seed=1)
+
+
+@pytest.mark.parametrize("weight", [1e-3, 40.0])
+@pytest.mark.parametrize("kind", [priors.TotalVariation, priors.GeneralizedVariation, priors.Smoothness])
+def test_prior_keeps_the_contract_at_any_weight(kind, weight):
+    check_prior(kind(weight), shape=SHAPE, seed=2)
