@@ -37,6 +37,6 @@ def output_folder(path: str | os.PathLike) -> Iterator[Path]:
 
 
 def _remove(folders: list[Path]) -> None:
-    with suppress(OSError):  # not empty, or never made
-        for folder in folders:
+    for folder in folders:
+        with suppress(OSError, ValueError):  # not empty, or never made
             folder.rmdir()

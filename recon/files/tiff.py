@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import logging
 import os
+import warnings
 from collections.abc import Iterator
 from contextlib import contextmanager
 
@@ -66,6 +67,7 @@ def _silent() -> Iterator[None]:
     logger = logging.getLogger("tifffile")
     before, logger.disabled = logger.disabled, True
     try:
-        yield
+        with warnings.catch_warnings(action="ignore"):
+            yield
     finally:
         logger.disabled = before

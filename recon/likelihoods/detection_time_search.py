@@ -1,8 +1,8 @@
 """The range that fits the tags of a pixel best: the global maximum of sum over tags of log(1 + p(y - z) / noise).
 
-Ascents start at every tag and halfway between neighbours, by Newton's rule with halved steps. A start is
-skipped where all tags that can see it, each at the pulse's peak, would not reach the best found so far.
-Tags are sorted, so an ascent looks only at those within the pulse's length.
+Ascents by Newton's rule with halved steps start at every tag, and on a fine grid of places that two tags
+or more can see. A start is skipped where all tags that can see it, each at the pulse's peak, would not
+reach the best found so far. Tags are sorted, so an ascent looks only at those within the pulse's length.
 """
 
 from __future__ import annotations
@@ -17,6 +17,7 @@ from recon.kernels import COMPILE
 from recon.likelihoods.detection_time_kernels import density
 
 FAINT = 1e-3  # of the noise; a tag where p is lower counts as out of sight when starts are skipped
+SPACING = 0.25  # of the pulse's core, between starts
 STEPS = 60  # of one ascent
 
 
@@ -40,35 +41,41 @@ def _best_of(tags, noise, mode, core, low, step, pieces, period):
     high = low + step * pieces.shape[0]
     n = tags.size
     at, top = tags[0] - mode, -1.0
-    last = -math.inf
-    for k in range(n if n > 1 else 0):  # the best tag, to begin with a high bar
-        if tags[k] - last >= 0.25 * core:
-            last = tags[k]
-            value = _sums(tags, tags[k] - mode, noise, low, high, step, pieces, period)[0]
-            if value > top:
-                at, top = tags[k] - mode, value
+    if n > 1:  # the best tag first, for a high bar
+        last = -math.inf
+        for y in tags:
+            if y - last >= SPACING * core:
+                last = y
+                value = _sums(tags, y - mode, noise, low, high, step, pieces, period)[0]
+                if value > top:
+                    at, top = y - mode, value
     at, top = _ascend(tags, at, noise, core, low, high, step, pieces, period)
     if n > 1:
         peak = math.log1p(density(mode, low, step, pieces)[0] / noise)
         left, right = _sight(noise, low, step, pieces)
-        last = -math.inf
-        for k in range(2 * n):
-            here = tags[k // 2]
-            if k % 2:
-                following = tags[0] + period if k == 2 * n - 1 else tags[k // 2 + 1]
-                here = 0.5 * (here + following)
-            here -= mode
-            if here - last < 0.25 * core:
-                continue
-            last = here
-            if k % 2 and following - mode - here > 0.5 * (right - left):
-                continue  # neither neighbour sees the other's half
-            seen = _locate(tags, here + right + core, period) - _locate(tags, here + left - core, period)
-            if min(seen, n) * peak + FAINT * n > top:
-                place, value = _ascend(tags, here, noise, core, low, high, step, pieces, period)
-                if value > top:
-                    at, top = place, value
+        last = place = -math.inf
+        for y in tags:
+            if y - last >= SPACING * core:
+                last = y
+                if _bar(tags, y - mode, left, right, core, period) * peak + FAINT * n > top:
+                    found, value = _ascend(tags, y - mode, noise, core, low, high, step, pieces, period)
+                    if value > top:
+                        at, top = found, value
+            place = max(place, y - right)
+            while place < y - left:
+                seen = _bar(tags, place, left, right, core, period)
+                if seen > 1 and seen * peak + FAINT * n > top:
+                    found, value = _ascend(tags, place, noise, core, low, high, step, pieces, period)
+                    if value > top:
+                        at, top = found, value
+                place += SPACING * core
     return at - period * math.floor(at / period), top
+
+
+@numba.njit(**COMPILE)
+def _bar(tags, z, left, right, core, period):
+    """Return how many tags can see places within a core of z."""
+    return min(_locate(tags, z + right + core, period) - _locate(tags, z + left - core, period), tags.size)
 
 
 @numba.njit(**COMPILE)

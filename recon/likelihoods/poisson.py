@@ -129,7 +129,8 @@ class Poisson(Likelihood):
 
     def prox(self, v: np.ndarray, step: float) -> np.ndarray:
         """Return the prox in closed form: the positive root of a quadratic in x + offset."""
-        half = 0.5 * (np.asarray(v, np.float64) - step * self._slope + self._offset)
+        slope = self._slope.astype(np.float64)
+        half = 0.5 * (np.asarray(v, np.float64) - step * slope + self._offset)
         return half + np.sqrt(half * half + step * self._count.astype(np.float64)) - self._offset
 
     def conjugate_map(self, u: np.ndarray, low: float, high: float) -> np.ndarray:

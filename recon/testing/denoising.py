@@ -11,7 +11,7 @@ from recon.testing.errors import require_at_most
 
 ITERATIONS = 4000
 CHECKED_EVERY = 50
-GAP = 1e-3
+GAP = 5e-3
 
 
 def check_denoising(prior: Any, shape: tuple[int, int], rng: np.random.Generator) -> None:

@@ -23,7 +23,9 @@ class Ran(NamedTuple):
 
 
 @pytest.fixture
-def run(capsys: pytest.CaptureFixture[str], tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Callable[..., Ran]:
+def run(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> Callable[..., Ran]:
     """Run a command in an empty folder."""
     monkeypatch.chdir(tmp_path)
 
@@ -46,7 +48,8 @@ def scene() -> np.ndarray:
 def counts_file(tmp_path_factory: pytest.TempPathFactory) -> Path:
     path = tmp_path_factory.mktemp("counts") / "square.h5"
     truth = scene()
-    save(path, simulate.counts(truth, 500, 0.01, 0.001, seed=1), truth={"reflectivity": truth}, note="Made up.")
+    drawn = simulate.counts(truth, 500, 0.01, 0.001, seed=1)
+    save(path, drawn, truth={"reflectivity": truth}, note="Made up.")
     return path
 
 

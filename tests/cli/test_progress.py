@@ -13,7 +13,14 @@ from recon.solvers import State
 
 @pytest.mark.parametrize(
     ("first", "gap", "share"),
-    [(1.0, 1.0, 0.0), (1.0, 1e-2, 0.5), (1e-1, 1e-3, 2 / 3), (1.0, 1e-4, 1.0), (1.0, 0.0, 1.0), (1e-6, 1e-6, 1.0)],
+    [
+        (1.0, 1.0, 0.0),
+        (1.0, 1e-2, 0.5),
+        (1e-1, 1e-3, 2 / 3),
+        (1.0, 1e-4, 1.0),
+        (1.0, 0.0, 1.0),
+        (1e-6, 1e-6, 1.0),
+    ],
 )
 def test_equal_factors_of_the_gap_are_equal_lengths_of_the_bar(first, gap, share):
     assert progress.share_done(first, gap, 1e-4) == pytest.approx(share)

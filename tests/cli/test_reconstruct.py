@@ -50,8 +50,15 @@ def test_diagnostics_hold_the_certificate_and_the_error(run, counts_file, tmp_pa
 
 def test_the_table_says_what_came_out(run, counts_file):
     ran = run("reconstruct", counts_file, "--out", "results")
-    for words in ("square.h5", "counts, 20 x 24 pixels", "reflectivity", "total variation, weight", "converged",
-                  "rmse against the truth", "results"):  # fmt: skip
+    for words in (
+        "square.h5",
+        "counts, 20 x 24 pixels",
+        "reflectivity",
+        "total variation, weight",
+        "converged",
+        "rmse against the truth",
+        "results",
+    ):
         assert words in ran.out
     assert "NOT CONVERGED" not in ran.out
 
@@ -99,7 +106,8 @@ def test_the_prior_and_its_weight_are_those_asked_for(run, counts_file, tmp_path
     ran = run("reconstruct", counts_file, "--prior", name, "--weight", 1.5, "--tolerance", 1e-3, "--json")
     assert ran.code == 0
     assert json.loads(ran.out)["images"]["reflectivity"]["priors"] == [{"name": name, "weight": 1.5}]
-    expected = recon.reconstruct(recon.load(counts_file), getattr(priors, cls)(1.5), tolerance=1e-3).reflectivity
+    prior = getattr(priors, cls)(1.5)
+    expected = recon.reconstruct(recon.load(counts_file), prior, tolerance=1e-3).reflectivity
     written = tifffile.imread(tmp_path / "fewcount-out" / "square" / "reflectivity.tif")
     np.testing.assert_array_equal(written, expected.image)
 
@@ -118,7 +126,8 @@ def test_frames_become_the_yield(run, frames_file, tmp_path):
     assert list(summary["images"]) == ["electron_yield"]
     assert summary["acquisitions"]["coupon.h5"]["frames"] == 80
     expected = recon.reconstruct(recon.load(frames_file)).electron_yield
-    np.testing.assert_array_equal(tifffile.imread(tmp_path / "results" / "electron_yield.tif"), expected.image)
+    written = tifffile.imread(tmp_path / "results" / "electron_yield.tif")
+    np.testing.assert_array_equal(written, expected.image)
 
 
 def test_files_of_an_earlier_run_are_replaced(run, counts_file, tmp_path):
