@@ -150,7 +150,7 @@ class SampledPulse:
         segment = self._segment(inside)
         u = inside - self.times[segment]
         share = self._cumulative[segment] + u * (self._density[segment] + 0.5 * u * self._slope[segment])
-        return np.minimum(share, 1.0)
+        return np.where(inside < self.times[-1], np.minimum(share, 1.0), 1.0)[()]
 
     def _segment(self, t: ArrayLike) -> NDArray[np.intp]:
         return np.clip(np.searchsorted(self.times, t, side="right") - 1, 0, self.times.size - 2)

@@ -9,6 +9,7 @@ from __future__ import annotations
 import sys
 from collections.abc import Sequence
 from importlib import import_module
+from io import TextIOWrapper
 
 from recon.cli.arguments import parser
 from recon.errors import InputError
@@ -21,6 +22,8 @@ def main(argv: Sequence[str] | None = None) -> int:
 
     argv: the words after `fewcount`; those the process was started with if left out.
     """
+    if isinstance(sys.stdout, TextIOWrapper):  # a file name may hold what the terminal cannot show
+        sys.stdout.reconfigure(errors="backslashreplace")
     try:
         options = parser().parse_args(argv)
         return import_module(options.module).run(options)

@@ -45,7 +45,8 @@ class Source:
     @classmethod
     def read(cls, path: Path) -> Source:
         """Read a file; raises InputError."""
-        return cls(path.name, load(path), load_truth(path), load_note(path))
+        name = path.name.encode(errors="backslashreplace").decode()  # bytes that are no text, written out
+        return cls(name, load(path), load_truth(path), load_note(path))
 
 
 @dataclass

@@ -64,21 +64,20 @@ class GuardedFile:
     def array(self, place: str, kinds: str = "iuf", units: str | None = None) -> NDArray:
         """A dataset whose numpy kind is one of `kinds`, in `units` where it names its own."""
         with _naming(place):
-            dataset = self._dataset(place)
-            if dataset.dtype.kind not in kinds:
-                raise InputError(f"holds {dataset.dtype} values; store plain numbers there")
+            dataset = self._dataset(place, kinds)
             if units is not None and "units" in dataset.attrs and (given := _text(dataset, "units")) != units:
                 raise InputError(f"is in {given}; store it in {units}")
             values = np.asarray(dataset[()])
-            # a stored boolean may be any byte
-            return values.view(np.uint8) != 0 if values.dtype.kind == "b" else values
+            if values.dtype.kind == "b":
+                return values.view(np.uint8) != 0  # a stored boolean may be any byte
+            return values.astype(values.dtype.newbyteorder("="), copy=False)
 
     def string(self, place: str) -> str:
         """A dataset that is one string of fixed length."""
         with _naming(place):
-            dataset = self._dataset(place)
-            if dataset.dtype.kind != "S" or dataset.shape != ():
-                raise InputError("is not a string of fixed length; store one there")
+            dataset = self._dataset(place, "S")
+            if dataset.shape != ():
+                raise InputError("is a list of strings; store one string there")
             return bytes(dataset[()]).decode()
 
     def _object(self, place: str, required: bool = True) -> object:
@@ -96,13 +95,16 @@ class GuardedFile:
             item = item[name]
         return item
 
-    def _dataset(self, place: str) -> object:
+    def _dataset(self, place: str, kinds: str) -> object:
         """A dataset that is safe to read, charged against the memory allowed for the file."""
         import h5py
 
         dataset = self._object(place)
         if not isinstance(dataset, h5py.Dataset) or dataset.shape is None:
             raise InputError("is not a dataset; store the values there")
+        if dataset.dtype.kind not in kinds:
+            wanted = "a string of fixed length" if kinds == "S" else "plain numbers"
+            raise InputError(f"holds {dataset.dtype} values; store {wanted} there")
         creation = dataset.id.get_create_plist()
         layout = creation.get_layout()
         if layout == h5py.h5d.VIRTUAL or creation.get_external_count():

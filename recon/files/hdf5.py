@@ -11,8 +11,8 @@
       truth                   NXcollection: the images a simulation started from
       note                    NXnote
 
-A setting is a scalar or a map with a `units` attribute ("1" = none). The file carries the checksums
-HDF5 offers, so that damage is found rather than read as data.
+A setting is a scalar or a map with a `units` attribute ("1" = none). Strings have a fixed length. The
+file carries the checksums HDF5 offers, so that damage is found rather than read as data.
 """
 
 import os

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 import textwrap
+import warnings
 from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
@@ -28,7 +29,7 @@ LINE = 0.21  # inches, the height of a line of text
 STYLE = {
     "font.family": "sans-serif", "font.sans-serif": ["DejaVu Sans"], "text.usetex": False,
     "axes.edgecolor": "#666666", "figure.facecolor": "white", "savefig.facecolor": "white",
-    "image.interpolation": "auto", "image.origin": "upper",
+    "image.origin": "upper",
 }  # fmt: skip
 
 
@@ -73,9 +74,9 @@ def save_picture(path: str | os.PathLike, picture: Picture) -> None:
     """Write the picture as a PNG file, all or nothing. Raises InputError or OSError as `replacing` does."""
     import matplotlib
 
-    with matplotlib.rc_context(STYLE), replacing(path) as temporary:
-        figure = draw(picture)
-        figure.savefig(
+    with matplotlib.rc_context(STYLE), replacing(path) as temporary, warnings.catch_warnings():
+        warnings.filterwarnings("ignore", "Glyph", UserWarning)  # a name may hold letters the font has not
+        draw(picture).savefig(
             temporary, format="png", dpi=DPI,
             metadata={"Title": f"{words.spelled(picture.name)}, {picture.source}", "Software": "fewcount"},
         )
@@ -110,7 +111,7 @@ def draw(picture: Picture) -> Figure:
             draw_panel(place(x, y, width, height), panel)
     for index, (text, style) in enumerate(head):
         y = 1 - (0.25 + LINE * index + (0.08 if index else 0.0)) / whole[1]
-        figure.text(LEFT / whole[0], y, text, va="center", **style)
+        figure.text(LEFT / whole[0], y, text, va="center", parse_math=False, **style)
     return figure
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
@@ -17,6 +18,7 @@ NO_DATA = "#c9c4d4"
 ACCENT = "#1f5f8b"
 ALARM = "#b3261e"
 STRIP = 0.25  # rows over columns, or the reverse, below which pixels are not drawn square
+MOST_ACROSS = {False: 400, True: 900}  # values drawn along the longer side of a small and the main panel
 MOST_SAMPLES = 1 << 20
 EXTEND = {(False, False): "neither", (True, False): "min", (False, True): "max", (True, True): "both"}
 
@@ -64,11 +66,16 @@ def draw_panel(axes: Axes, panel: Panel, main: bool = False) -> None:
     rows, columns = panel.values.shape
     square = STRIP < rows / columns < 1 / STRIP
     colours = matplotlib.colormaps[panel.colours].with_extremes(bad=NO_DATA)
+    block = max(1, math.ceil(max(rows, columns) / MOST_ACROSS[main]))
+    values = reduced(panel.values, block)
     shown = axes.imshow(
-        np.ma.masked_invalid(np.asarray(panel.values, np.float32)), cmap=colours, vmin=low, vmax=high,
+        np.ma.masked_invalid(values), cmap=colours, vmin=low, vmax=high,
         aspect="equal" if square else "auto", interpolation_stage="data",
+        # between pixels, one without a value would take its neighbours with it
+        interpolation="auto" if np.isfinite(values).all() else "nearest",
+        extent=(-0.5, block * values.shape[1] - 0.5, block * values.shape[0] - 0.5, -0.5),
     )
-    axes.set_anchor("W")
+    axes.set(xlim=(-0.5, columns - 0.5), ylim=(rows - 0.5, -0.5), anchor="W")
     style = {"fontsize": 13, "fontweight": "bold"} if main else {"fontsize": 10}
     axes.set_title(panel.title, loc="left", **style)
     finite = _sample(panel.values)
@@ -128,6 +135,19 @@ def _width(axes: Axes, tall: float | None) -> float:
 def _whole_ticks(*lines: Axis) -> None:
     for line in lines:
         line.get_major_locator().set_params(integer=True, min_n_ticks=1)
+
+
+def reduced(image: np.ndarray, block: int) -> np.ndarray:
+    """Return the means of the finite values in square blocks of pixels, smaller at the far ends (float32)."""
+    if block == 1:
+        return np.asarray(image, np.float32)
+    good = np.isfinite(image)
+    sums, numbers = np.where(good, image, 0.0).astype(np.float64), good.astype(np.float64)
+    for axis in (0, 1):
+        starts = np.arange(0, image.shape[axis], block)
+        sums, numbers = np.add.reduceat(sums, starts, axis), np.add.reduceat(numbers, starts, axis)
+    with np.errstate(invalid="ignore"):
+        return (sums / numbers).astype(np.float32)
 
 
 def _sample(image: np.ndarray) -> np.ndarray:

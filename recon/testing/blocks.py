@@ -45,7 +45,8 @@ def check_block(prior: Any, shape: tuple[int, int], rng: np.random.Generator) ->
             relaxation = float(rng.uniform(1.0, 1.9))
             start = reference.y
             block.mark()
-            _check_step(prior, block, reference, extrapolated, (ratio / norm, 1.0 / (ratio * norm), relaxation), rng)
+            settings = (ratio / norm, 1.0 / (ratio * norm), relaxation)
+            _check_step(prior, block, reference, extrapolated, settings, rng)
             allowed = 10.0 * SINGLE * (1.0 + relaxation) * reference.size * np.sqrt(start.size)
             distance = float(np.linalg.norm(reference.y - start))
             claim = "the root of moved is not the distance of the duals from mark"
@@ -64,14 +65,16 @@ def _check_step(
     held = 0.0 if fresh else adjoint.astype(np.float64)
     block.step(extrapolated, *settings, adjoint, fresh)
     expected = held + reference.step(extrapolated.astype(np.float64), *settings)
-    require(np.array_equal(extrapolated, before), prior, "step of block overwrites its image", "others", "the same")
+    claim = "step of block overwrites its image"
+    require(np.array_equal(extrapolated, before), prior, claim, "other numbers", "the same")
     allowed = SINGLE * (1.0 + np.sqrt(block.norm_squared)) * reference.size + SINGLE * np.max(np.abs(held))
     claim = f"step of block (fresh = {fresh}) gives another K' y than the contract's step"
     require_close(prior, claim, adjoint, expected, allowed)
 
 
 def _check_certificate(
-    prior: Any, block: Any, reference: Reference, shape: tuple[int, int], size: float, rng: np.random.Generator
+    prior: Any, block: Any, reference: Reference, shape: tuple[int, int], size: float,
+    rng: np.random.Generator,
 ) -> None:
     """Check that certify gives the penalty of K (image, v), and a lower bound of the value of any image."""
     image = (size * rng.standard_normal(shape)).astype(np.float32)
@@ -79,7 +82,8 @@ def _check_certificate(
     fresh, added = np.full(shape, np.nan, np.float32), held.copy()
     penalty, conjugate = block.certify(image, fresh, True)
     again = block.certify(image, added, False)
-    require((penalty, conjugate) == again, prior, "certify of block is not repeatable", again, (penalty, conjugate))
+    claim = "certify of block does not give the same again"
+    require((penalty, conjugate) == again, prior, claim, again, (penalty, conjugate))
     scale = float(np.max(np.abs(fresh))) + float(np.max(np.abs(held)))
     claim = "certify of block writes and adds different K' y"
     require_close(prior, claim, added, held.astype(np.float64) + fresh, SINGLE * scale)

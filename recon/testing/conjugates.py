@@ -57,8 +57,9 @@ def _check_sum(likelihood: Likelihood, u: np.ndarray, low: float, high: float) -
     for given in (u, u.astype(np.float32)):
         pixels = likelihood.conjugate_map(given.astype(np.float64), low, high)
         allowed = 1e-6 * float(np.sum(1.0 + np.abs(pixels)))
+        got = likelihood.conjugate(given, low, high)
         claim = f"conjugate of a {given.dtype} u over [{low:.6g}, {high:.6g}] is not the sum of conjugate_map"
-        require_close(likelihood, claim, likelihood.conjugate(given, low, high), float(np.sum(pixels)), allowed)
+        require_close(likelihood, claim, got, np.sum(pixels), allowed)
 
 
 def _check_search(

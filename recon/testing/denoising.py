@@ -15,7 +15,7 @@ GAP = 5e-3
 
 
 def check_denoising(prior: Any, shape: tuple[int, int], rng: np.random.Generator) -> None:
-    """Minimise |x - f|^2 / 2 + value(x) by primal-dual steps (Chambolle and Pock 2011) to a small certified gap."""
+    """Minimise |x - f|^2 / 2 + value(x) to a certified gap by primal-dual steps (Chambolle, Pock 2011)."""
     f = _noisy_image(prior, shape, rng)
     x, extrapolated, adjoint = f.copy(), f.copy(), np.zeros(shape, np.float32)
     block = prior.block(shape)

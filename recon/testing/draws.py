@@ -14,6 +14,7 @@ from recon.testing.errors import require, require_at_most
 
 DRAWS = 200
 SIGMAS = 5.0
+RELATIVE = 1e-5
 
 
 def check_draws(likelihood: Likelihood, rng: np.random.Generator) -> None:
@@ -50,7 +51,7 @@ def check_draws(likelihood: Likelihood, rng: np.random.Generator) -> None:
 def _require_zero_mean(likelihood: Likelihood, claim: str, sample: np.ndarray) -> None:
     """Raise ConformanceError if a mean over draws is further from zero than chance allows."""
     error = np.std(sample, axis=0, ddof=1) / np.sqrt(len(sample))
-    for mean, allowed in zip(np.mean(sample, axis=0), SIGMAS * error + 1e-6, strict=True):
+    for mean, allowed in zip(np.mean(sample, axis=0), SIGMAS * error + RELATIVE, strict=True):
         where = f"a typical image, relative to fisher_information, over {len(sample)} draws"
         require(abs(mean) <= allowed, likelihood, claim, f"{mean:.4g}", f"0 to within {allowed:.2g}", where)
 
@@ -60,22 +61,20 @@ def _check_reproducible(likelihood: Likelihood, x: np.ndarray) -> None:
     one, same, other = (likelihood.draw(x, seed) for seed in (7, 7, 8))
     generator = np.random.default_rng(7)
     first, second = likelihood.draw(x, generator), likelihood.draw(x, generator)
-    require(type(one) is type(likelihood), likelihood, "draw returns another class", type(one), type(likelihood))
-    require(one.shape == likelihood.shape, likelihood, "draw changes the shape", one.shape, likelihood.shape)
-    require(
-        np.array_equal(one.has_data, likelihood.has_data), likelihood, "draw changes has_data", "another map",
-        "the same map",
-    )
-    require(np.array_equal(likelihood.value_map(x), before), likelihood, "draw changes the data it is called on",
-            "another value_map", "the same")  # fmt: skip
+    equal = np.array_equal
+    facts = [
+        (type(one) is type(likelihood), "draw returns another class", type(one), type(likelihood)),
+        (one.shape == likelihood.shape, "draw changes the shape", one.shape, likelihood.shape),
+        (equal(one.has_data, likelihood.has_data), "draw changes has_data", "another map", "the same"),
+        (equal(likelihood.value_map(x), before), "draw changes its own data", "others", "the same"),
+    ]
     drawn = [d.value_map(x) for d in (one, same, other, first, second)]
-    require(np.array_equal(drawn[0], drawn[1]), likelihood, "draws of one seed differ", "two values", "one")
+    facts.append((equal(drawn[0], drawn[1]), "draws of one seed differ", "two value_maps", "one"))
     if likelihood.has_data.any():
-        require(
-            not np.array_equal(drawn[0], drawn[2]), likelihood, "draws of two seeds agree", "one value", "two"
-        )
-        require(
-            not np.array_equal(drawn[3], drawn[4]), likelihood, "two draws of one generator agree", "one value",
-            "two",
-        )
+        facts += [
+            (not equal(drawn[0], drawn[2]), "draws of two seeds agree", "one value_map", "two"),
+            (not equal(drawn[3], drawn[4]), "two draws of one generator agree", "one value_map", "two"),
+        ]
+    for holds, claim, got, expected in facts:
+        require(holds, likelihood, claim, got, expected)
     require_at_most(likelihood, "value_map of a draw is negative", -drawn[0], 0.0, 1e-9, x)

@@ -48,12 +48,12 @@ def check_dual_prox(prior: Any, shape: tuple[int, int], rng: np.random.Generator
             claim = f"conjugate is not finite at dual_prox(y), at {where}"
             require(np.isfinite(conjugate), prior, claim, conjugate, "a finite number")
             total, size = prior.penalty(p) + conjugate, abs(product) + float(np.sum(np.abs(p * q)))
-            claim = f"penalty(p) + conjugate(q) is not <p, q> for q = dual_prox(y), p = (y - q) / sigma, at {where}"
+            claim = f"penalty(p) + conjugate(q) is not <p, q>, q = dual_prox(y), sigma p = y - q, at {where}"
             require_close(prior, claim, total, product, RELATIVE * (size + abs(conjugate)))
 
 
 def check_conjugate(prior: Any, shape: tuple[int, int], rng: np.random.Generator) -> None:
-    """Check the inequality of Fenchel and Young, g(p) + g*(q) >= <p, q>, for q inside and outside the domain."""
+    """Check the inequality of Fenchel and Young, g(p) + g*(q) >= <p, q>, q inside the domain and outside."""
     for y in duals(prior, shape, rng):
         q = prior.dual_prox(y, 1.0)
         for dual in (q, 0.5 * q, y):
@@ -67,7 +67,7 @@ def check_conjugate(prior: Any, shape: tuple[int, int], rng: np.random.Generator
 
 
 def check_feasible(prior: Any, shape: tuple[int, int], rng: np.random.Generator) -> None:
-    """Check that feasible(y) lies in the domain of g*, and on K_v' y = 0 where there is an auxiliary image."""
+    """Check that feasible(y) lies in the domain of g*, and on K_v' y = 0 if there is an auxiliary image."""
     for y in duals(prior, shape, rng):
         q = prior.feasible(y, shape)
         claim = f"conjugate is not finite at feasible(y), for y of size {np.max(np.abs(y)):.3g}"

@@ -25,7 +25,8 @@ def check_expression(
 
     claim = "expression is not one convex number by the rules of disciplined convex programming"
     convex = expression.is_scalar() and expression.is_convex()
-    require(convex, subject, claim, f"{expression.curvature} of shape {expression.shape}", "CONVEX of shape ()")
+    got = f"{expression.curvature} of shape {expression.shape}"
+    require(convex, subject, claim, got, "CONVEX of shape ()")
     claim = "a constraint of expression breaks the rules of disciplined convex programming"
     require(all(c.is_dcp() for c in constraints), subject, claim, "another constraint", "convex ones")
     variables = {v.id: v for part in (expression, *constraints) for v in part.variables()}
@@ -37,8 +38,8 @@ def check_expression(
         got, tolerance = float(expression.value), 1e-6
     else:
         problem = cp.Problem(cp.Minimize(expression), [*constraints, x == image])
-        with warnings.catch_warnings():
-            warnings.filterwarnings("ignore", message="Solution may be inaccurate")  # the value is judged below
+        with warnings.catch_warnings():  # the value is judged below
+            warnings.filterwarnings("ignore", message="Solution may be inaccurate")
             got, tolerance = float(problem.solve()), 1e-4
     claim = "expression has another value than value"
     require_close(subject, claim, got, value, tolerance * (abs(value) + 1e-2 * (1.0 + abs(value))))

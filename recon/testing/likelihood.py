@@ -25,7 +25,8 @@ def check_likelihood(likelihood: Likelihood, seed: int = 0) -> None:
 
     Raises ConformanceError, one sentence, at the first property that does not hold.
     """
-    require(isinstance(likelihood, Likelihood), likelihood, "is not a likelihood", type(likelihood), "a Likelihood")
+    is_one = isinstance(likelihood, Likelihood)
+    require(is_one, likelihood, "is not a likelihood", type(likelihood), "a subclass of Likelihood")
     rng = np.random.default_rng(seed)
     values.check_declarations(likelihood)
     _check_curve(likelihood, rng)
@@ -62,6 +63,6 @@ def _check_likelihood_expression(likelihood: Likelihood, rng: np.random.Generato
         expression, constraints = likelihood.expression(x)
     except NotImplementedError:  # the conic solver is then out of reach, and says so
         return
-    anywhere, _, near, typical = points.images(likelihood, rng)  # an end of the domain is hard on conic solvers
+    anywhere, _, near, typical = points.images(likelihood, rng)  # conic solvers fail close to a domain's end
     for image in (anywhere, near, typical):
         check_expression(likelihood, x, expression, constraints, image, likelihood.value(image))

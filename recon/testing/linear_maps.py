@@ -73,5 +73,5 @@ def check_norm(prior: Any, shape: tuple[int, int], rng: np.random.Generator) -> 
         claim = f"{name} is below the squared norm of K for {where}"
         require_at_most(prior, claim, largest, bound, 1e-6 * largest)
         if largest > 0.0:
-            claim = f"{name} is more than {LOOSE:g} times the squared norm of K for {where}, which slows every solve"
+            claim = f"{name} is more than {LOOSE:g} times the squared norm of K for {where}: it slows solves"
             require_at_most(prior, claim, bound, LOOSE * largest, 1e-6 * largest)

@@ -29,7 +29,8 @@ def check_value(prior: Any, shape: tuple[int, int], rng: np.random.Generator) ->
         require(np.isfinite(value), prior, "value of a random image", value, "a finite number")
         if v is None:
             penalty = prior.penalty(prior.forward(x))
-            require_close(prior, "value(x) is not penalty(forward(x))", value, penalty, EXACT * (1.0 + penalty))
+            claim = "value(x) is not penalty(forward(x))"
+            require_close(prior, claim, value, penalty, EXACT * (1.0 + penalty))
         else:
             for size in (0.0, 0.1, 1.0):
                 penalty = prior.penalty(prior.forward(x, size * v))

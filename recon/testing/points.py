@@ -30,8 +30,8 @@ def inside(likelihood: Likelihood, x: np.ndarray) -> np.ndarray:
 def typical(likelihood: Likelihood, rng: np.random.Generator) -> np.ndarray:
     """Return an image near the level of the data, well inside the span: what could be true."""
     low, high = span(likelihood)
-    data = likelihood.has_data
-    level = float(np.mean(inside(likelihood, likelihood.estimate())[data])) if data.any() else (low + high) / 2
+    seen = inside(likelihood, likelihood.estimate())[likelihood.has_data]
+    level = float(np.mean(seen)) if seen.size else 0.5 * (low + high)
     return level + 0.3 * min(level - low, high - level) * rng.uniform(-1.0, 1.0, likelihood.shape)
 
 

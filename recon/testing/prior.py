@@ -7,6 +7,7 @@ from typing import Any
 import numpy as np
 
 from recon.testing import blocks, denoising, duality, linear_maps, penalties
+from recon.testing.errors import require
 
 
 def check_prior(prior: Any, shape: tuple[int, int] = (7, 9), seed: int = 0) -> None:
@@ -24,6 +25,7 @@ def check_prior(prior: Any, shape: tuple[int, int] = (7, 9), seed: int = 0) -> N
 
     Raises ConformanceError, one sentence, at the first property that does not hold.
     """
+    require(hasattr(prior, "terms"), prior, "is not a prior", type(prior), "a subclass of priors.Prior")
     for term in prior.terms():
         term.check_shape(shape)
         rng = np.random.default_rng(seed)

@@ -39,7 +39,7 @@ def check_proximal_step(likelihood: Likelihood, rng: np.random.Generator) -> Non
 
 
 def _short_way(likelihood: Likelihood, x: np.ndarray, step: float, rng: np.random.Generator) -> np.ndarray:
-    """Return images beside x: a tenth of the minimum's width away, nearer where the curvature changes much."""
+    """Return an image a tenth of the minimum's width from x, nearer where the curvature changes much."""
     curvature = np.maximum(likelihood.curvature(x), 0.0)
     target = x + SHORT / np.sqrt(curvature + 1.0 / step) * rng.standard_normal(x.shape)
     for _ in range(30):
@@ -54,12 +54,15 @@ def _exact(likelihood: Likelihood, v: np.ndarray, step: float, bounds: Bounds) -
     return np.clip(np.asarray(likelihood.prox(v, step), np.float64), *bounds)
 
 
-def _rounding(likelihood: Likelihood, x: np.ndarray, v: np.ndarray, step: float, proposed: np.ndarray) -> np.ndarray:
+def _rounding(
+    likelihood: Likelihood, x: np.ndarray, v: np.ndarray, step: float, proposed: np.ndarray
+) -> np.ndarray:
     return SINGLE * (np.abs(x) + np.abs(v) + np.abs(proposed) + step * np.abs(likelihood.gradient(x)))
 
 
 def _check_step(
-    likelihood: Likelihood, start: np.ndarray, adjoint: np.ndarray, step: float, bounds: Bounds, relaxation: float
+    likelihood: Likelihood, start: np.ndarray, adjoint: np.ndarray, step: float, bounds: Bounds,
+    relaxation: float,
 ) -> None:
     x, adjoint, extrapolated = start.copy(), adjoint.astype(np.float32), np.full_like(start, np.nan)
     start, kept = start.astype(np.float64), adjoint.astype(np.float64)
@@ -78,7 +81,9 @@ def _check_step(
         require_close(likelihood, claim, got, expected, 2.0 * allowed, start)
 
 
-def _check_repeated(likelihood: Likelihood, start: np.ndarray, v: np.ndarray, step: float, bounds: Bounds) -> None:
+def _check_repeated(
+    likelihood: Likelihood, start: np.ndarray, v: np.ndarray, step: float, bounds: Bounds
+) -> None:
     x, extrapolated = start.copy(), np.empty_like(start)
     for _ in range(REPEATS):
         before = x.astype(np.float64)
@@ -92,5 +97,5 @@ def _check_repeated(likelihood: Likelihood, start: np.ndarray, v: np.ndarray, st
         claim = f"proximal_step leaves an extrapolated image that is not 2 x~ - x, at step {step:.3g}"
         require_close(likelihood, claim, extrapolated, 2.0 * x - before, 2.0 * allowed, before)
     expected = _exact(likelihood, v, step, bounds)
-    claim = f"proximal_step does not come to the clipped prox in {REPEATS} steps from the same v, at step {step:.3g}"
+    claim = f"proximal_step does not come to the clipped prox in {REPEATS} goes at one v, at step {step:.3g}"
     require_close(likelihood, claim, x, expected, _rounding(likelihood, start, v, step, expected), start)

@@ -23,6 +23,13 @@ def check_declarations(likelihood: Likelihood) -> None:
         domain.low <= low and high <= domain.high, likelihood, "default_bounds leave the domain",
         (low, high), f"bounds within [{domain.low}, {domain.high}]",
     )
+    for end, is_open in ((domain.low, domain.low_open), (domain.high, domain.high_open)):
+        if np.isfinite(end) and not is_open:
+            image = np.full(shape, float(end))
+            with np.errstate(divide="ignore", invalid="ignore"):
+                deviance = likelihood.value_map(image)
+            claim = "value_map is not finite at a closed end of the domain"
+            require_finite(likelihood, claim, deviance, image)
     require(np.isfinite(likelihood.constant), likelihood, "constant", likelihood.constant, "a finite number")
     data, estimate = likelihood.has_data, likelihood.estimate()
     for name, array, dtype in (("has_data", data, np.bool_), ("estimate", estimate, np.float32)):
@@ -61,13 +68,14 @@ def _map(likelihood: Likelihood, name: str, x: np.ndarray) -> np.ndarray:
 
 
 def check_perfect_fit(likelihood: Likelihood, rng: np.random.Generator) -> None:
-    """Check that no image within the default bounds beats the estimate, and that a perfect fit has value zero.
+    """Check that no image within the default bounds beats the estimate, and that a perfect fit is worth zero.
 
     A pixel whose best fit lies beyond the bounds (every trial detected, fewer detections than the
     background gives) has to stop somewhere, and is let off the first.
     """
     low, high = likelihood.default_bounds
-    ends = [np.clip(points.inside(likelihood, np.full(likelihood.shape, end)), low, high) for end in (low, high)]
+    ends = [points.inside(likelihood, np.full(likelihood.shape, end)) for end in (low, high)]
+    ends = [np.clip(end, low, high) for end in ends]
     inner = (likelihood.gradient(ends[0]) <= 0.0) & (likelihood.gradient(ends[1]) >= 0.0)
     estimate = likelihood.estimate().astype(np.float64)
     deviance = likelihood.value_map(estimate)
@@ -108,7 +116,7 @@ def check_convexity(likelihood: Likelihood, rng: np.random.Generator) -> None:
 
 
 def check_residuals(likelihood: Likelihood, rng: np.random.Generator) -> None:
-    """Check that residuals are the signed root of the deviance, positive where the data ask for a larger x."""
+    """Check that residuals are the signed root of the deviance, positive where the data want a larger x."""
     for x in points.images(likelihood, rng):
         residuals, deviance = likelihood.residuals(x), 2.0 * likelihood.value_map(x)
         claim = "the square of residuals is not twice value_map"

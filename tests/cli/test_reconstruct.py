@@ -138,3 +138,14 @@ def test_files_of_an_earlier_run_are_replaced(run, counts_file, tmp_path):
     assert {path.name for path in (tmp_path / "results").iterdir()} == FILES
     variation = priors.TotalVariation(1.0).value
     assert variation(after) < variation(before)
+
+
+def test_file_names_of_any_kind_can_be_shown(run, counts_file, tmp_path, monkeypatch):
+    monkeypatch.setattr("recon.cli.job.save_picture", lambda *_: None)
+    odd = tmp_path / "a$b^$\u65e5\udcff.h5"
+    odd.write_bytes(counts_file.read_bytes())
+    ran = run("reconstruct", odd, "--out", "out\udcff")
+    assert (ran.code, ran.err) == (0, "")
+    assert "a$b^$\u65e5\\udcff.h5" in ran.out
+    assert "out\\udcff" in ran.out
+    assert json.loads((tmp_path / "out\udcff" / "diagnostics.json").read_text())["acquisitions"]

@@ -10,7 +10,7 @@ from matplotlib.figure import Figure
 from recon import Status
 from recon.report.data_images import data_image, pixel_by_pixel
 from recon.report.figure import Picture, draw, main_panel, save_picture, side_panels
-from recon.report.panels import Panel, spread, symmetric
+from recon.report.panels import Panel, reduced, spread, symmetric
 from recon.report.record import acquisition_record, image_record
 
 
@@ -98,6 +98,19 @@ def test_any_shape_can_be_shown(picture, tmp_path, shape):
     assert [path.name for path in tmp_path.iterdir()] == ["odd.png"]
 
 
+@pytest.mark.parametrize("block", [1, 2, 3, 7])
+def test_large_images_are_reduced_to_the_means_of_their_blocks(block):
+    image = np.random.default_rng(block).normal(size=(7, 5))
+    image[:2, :2] = np.nan
+    image[3, 4] = np.nan
+    small = reduced(image, block)
+    assert small.shape == (-(-7 // block), -(-5 // block))
+    for i, j in np.ndindex(small.shape):
+        part = image[i * block : (i + 1) * block, j * block : (j + 1) * block]
+        part = part[np.isfinite(part)]
+        assert small[i, j] == pytest.approx(part.mean()) if part.size else np.isnan(small[i, j])
+
+
 def test_limits_leave_out_the_ends():
     values = np.arange(1001.0)
     assert spread(values, share=0.01) == pytest.approx((10.0, 990.0))
@@ -113,3 +126,10 @@ def test_limits_are_never_equal(values):
     assert low < high
     finite = values[np.isfinite(values)]
     assert np.all((low < finite) & (finite < high))
+
+
+def test_names_are_shown_as_they_are(picture, tmp_path):
+    odd = replace(picture, source="a$b^$\u65e5.h5")
+    assert "a$b^$\u65e5.h5" in texts(draw(odd))
+    save_picture(tmp_path / "odd.png", odd)
+    assert (tmp_path / "odd.png").stat().st_size > 10_000

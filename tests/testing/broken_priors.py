@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import numpy as np
 
+from priors import GeneralizedVariation
+from priors.contract import Prior
 from tests.testing.huber_variation import HuberVariation
 
 
@@ -128,92 +130,36 @@ class ConicNotConvex(HuberVariation):
         return self.weight * float(np.sum(np.sqrt(np.abs(super().forward(x)))))
 
 
-class ChangedBlock(HuberVariation):
-    """The base of priors whose block is at fault: `change` alters a good one."""
+class AuxiliaryAdjointSign(GeneralizedVariation):
+    complaint = "auxiliary_adjoint is not the exact transpose of forward"
 
-    complaint = ""
-
-    def block(self, shape):
-        block = super().block(shape)
-        self.change(block)
-        return block
-
-    def change(self, block):
-        raise NotImplementedError
+    def auxiliary_adjoint(self, y, shape):
+        return -super().auxiliary_adjoint(y, shape)
 
 
-class BlockWithoutRelaxation(ChangedBlock):
-    complaint = "gives another K' y than the contract's step"
+class ValueAtAnAuxiliaryImage(GeneralizedVariation):
+    complaint = "value(x) is above penalty(forward(x, v))"
 
-    def change(self, block):
-        step = block.step
-        block.step = lambda image, sigma, tau, relaxation, adjoint, fresh: step(
-            image, sigma, tau, 1.0, adjoint, fresh
-        )
+    def value(self, x):
+        return self.penalty(self.forward(x, np.ones((2, *x.shape))))
 
 
-class BlockNeverAdds(ChangedBlock):
-    complaint = "(fresh = False) gives another K' y than the contract's step"
+class ValueNotMinimised(GeneralizedVariation):
+    complaint = "expression has another value than value"
 
-    def change(self, block):
-        step = block.step
-        block.step = lambda image, sigma, tau, relaxation, adjoint, fresh: step(
-            image, sigma, tau, relaxation, adjoint, True
-        )
+    def value(self, x):
+        return self.penalty(self.forward(x))
 
 
-class BlockMovedSquared(ChangedBlock):
-    complaint = "moved is not the distance of the duals from mark"
+class FeasibleOffBalance(GeneralizedVariation):
+    complaint = "auxiliary_adjoint is not zero at feasible(y)"
 
-    def change(self, block):
-        moved = block.moved
-        block.moved = lambda: moved() ** 2
-
-
-class CertifyOutsideDomain(ChangedBlock):
-    complaint = "lies above the value of an image"
-
-    def change(self, block):
-        certify = block.certify
-
-        def doubled(image, adjoint, fresh):
-            held = 0.0 if fresh else adjoint.copy()
-            penalty, conjugate = certify(image, adjoint, True)
-            adjoint[...] = held + 2.0 * adjoint
-            return penalty, conjugate
-
-        block.certify = doubled
+    def feasible(self, y, shape):
+        return self.dual_prox(y, 1.0)
 
 
-class CertifyOptimistic(ChangedBlock):
-    complaint = "certify of block gives another penalty"
-
-    def change(self, block):
-        certify = block.certify
-
-        def optimistic(image, adjoint, fresh):
-            penalty, conjugate = certify(image, adjoint, fresh)
-            return 0.99 * penalty, conjugate
-
-        block.certify = optimistic
-
-
-class CertifyNothing(ChangedBlock):
-    complaint = "the certificate of a denoising problem does not close"
-
-    def change(self, block):
-        certify = block.certify
-
-        def trivial(image, adjoint, fresh):
-            held = np.zeros_like(adjoint) if fresh else adjoint.copy()
-            penalty, _ = certify(image, adjoint, True)
-            adjoint[...] = held
-            return penalty, 0.0
-
-        block.certify = trivial
-
-
-def broken() -> list[HuberVariation]:
-    """Return an instance of every class above that has a complaint."""
-    kinds = [*HuberVariation.__subclasses__(), *LargerWeightIsLess.__subclasses__(), *ChangedBlock.__subclasses__()]
-    return [kind(weight=0.7) for kind in kinds if kind.complaint]
+def broken() -> list[Prior]:
+    """Return an instance of every class above."""
+    families = (HuberVariation, LargerWeightIsLess, GeneralizedVariation)
+    kinds = [kind for family in families for kind in family.__subclasses__()]
+    return [kind(weight=0.7) for kind in kinds if kind.__module__ == __name__]

@@ -69,7 +69,7 @@ class LogVariance(Likelihood):
         return type(self)(np.exp(x) * np.random.default_rng(seed).chisquare(nu) / nu, self.nu)
 
     def prox(self, v: np.ndarray, step: float) -> np.ndarray:
-        """The optimality condition x - v + a - a s2 exp(-x) = 0, a = step nu / 2, has Lambert's W for its root."""
+        """The root of x - v + a - a s2 exp(-x), a = step nu / 2, is Lambert's W, here by log argument."""
         a = 0.5 * step * self.nu
         with np.errstate(divide="ignore"):
             return v - a + wrightomega(np.log(a * self.s2) + a - v)

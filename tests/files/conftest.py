@@ -1,0 +1,108 @@
+"""Small acquisitions of every kind, and a bit-for-bit comparison of two of them."""
+
+import dataclasses
+
+import numpy as np
+import pytest
+
+from recon.acquisition import Counts, Frames, GaussianPulse, SampledPulse, TimeTags
+
+SHAPE = (6, 5)
+
+
+def _mask():
+    mask = np.ones(SHAPE, bool)
+    mask[2, 1] = False
+    return mask
+
+
+def _tags(seed, **settings):
+    rng = np.random.default_rng(seed)
+    tags = (rng.integers(0, 6, 90), rng.integers(0, 5, 90), rng.random(90) * 1e-7)
+    return TimeTags(
+        *tags, **{"shape": SHAPE, "trials": 700, "period": 1e-7, "pulse": GaussianPulse(0.3e-9)} | settings
+    )
+
+
+def _counts_plain(rng):
+    return Counts(rng.integers(0, 5, SHAPE), 10, gain=1 / 3, background=0.1)
+
+
+def _counts_maps(rng):
+    trials = rng.random(SHAPE) * 9
+    gain = rng.random(SHAPE).astype(np.float32) + 0.1
+    return Counts(
+        rng.integers(0, 2**40, SHAPE), trials, gain, rng.random(SHAPE), _mask(), several_per_trial=True
+    )
+
+
+def _tags_plain(rng):
+    return _tags(rng)
+
+
+def _tags_maps(rng):
+    times = np.sort(rng.random(20)) * 1e-9
+    return _tags(
+        rng,
+        pulse=SampledPulse(times, rng.random(20)),
+        trials=rng.integers(1, 9, SHAPE),
+        gain=rng.random(SHAPE) + 0.1,
+        background=rng.random(SHAPE),
+        mask=_mask(),
+        time_zero=-1e-9 / 3,
+        offset=rng.normal(size=SHAPE) * 1e-9,
+        refractive_index=1.33,
+        interval=1e-9 / 3,
+    )
+
+
+def _frames_plain(rng):
+    return Frames(rng.integers(0, 5, (4, *SHAPE), dtype=np.uint8), 0.1)
+
+
+def _frames_maps(rng):
+    return Frames(rng.integers(0, 500, (4, *SHAPE), dtype=np.int16), rng.random(SHAPE) + 0.1, _mask())
+
+
+MAKERS = [_counts_plain, _counts_maps, _tags_plain, _tags_maps, _frames_plain, _frames_maps]
+
+
+@pytest.fixture(params=MAKERS, ids=[maker.__name__[1:] for maker in MAKERS])
+def acquisition(request):
+    """One acquisition after another: every kind, plain and with all its settings."""
+    return request.param(np.random.default_rng(4))
+
+
+@pytest.fixture(scope="session")
+def counts():
+    return _counts_maps(np.random.default_rng(5))
+
+
+@pytest.fixture(scope="session")
+def tags():
+    return _tags_maps(np.random.default_rng(6))
+
+
+@pytest.fixture(scope="session")
+def frames():
+    return _frames_maps(np.random.default_rng(7))
+
+
+def _identical(a, b):
+    if dataclasses.is_dataclass(a):
+        return type(a) is type(b) and all(
+            _identical(getattr(a, field.name), getattr(b, field.name)) for field in dataclasses.fields(a)
+        )
+    if isinstance(a, np.ndarray):
+        return isinstance(b, np.ndarray) and (a.dtype, a.shape, a.tobytes()) == (
+            b.dtype,
+            b.shape,
+            b.tobytes(),
+        )
+    return type(a) is type(b) and a == b
+
+
+@pytest.fixture(scope="session")
+def identical():
+    """Whether two acquisitions agree in every bit of every field."""
+    return _identical
