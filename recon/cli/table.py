@@ -20,6 +20,11 @@ from recon.report.words import (
 
 Record = Mapping[str, Any]
 
+ALONE = "Uncertainty: standard, of a pixel by its own data alone."
+AGAINST_TRUTH = (
+    " Errors: root mean square and median absolute, against the truth; conventional: of each pixel by itself."
+)
+
 
 def print_summary(name: str, acquisition: Record, images: Mapping[str, Record]) -> None:
     """Print what an acquisition holds, and its images side by side."""
@@ -27,10 +32,12 @@ def print_summary(name: str, acquisition: Record, images: Mapping[str, Record]) 
     console.print(Text(name, style="bold"), Text(data_in_words(acquisition)), soft_wrap=True)
     if acquisition["note"]:
         console.print(Text(acquisition["note"], style="dim"), soft_wrap=True)
-    table = Table("", pad_edge=False)
+    known = any(record["error"] is not None for record in images.values())
+    table = Table(caption=ALONE + AGAINST_TRUTH if known else ALONE, caption_justify="left")
+    table.add_column("", no_wrap=True)
     for image in images:
         table.add_column(spelled(image), overflow="fold")
-    for label, cell in _rows(images.values()):
+    for label, cell in _ROWS + (_ERRORS if known else []):
         table.add_row(label, *(cell(record) for record in images.values()))
     console.print(table)
     console.print()
@@ -39,28 +46,6 @@ def print_summary(name: str, acquisition: Record, images: Mapping[str, Record]) 
 def print_line(text: str) -> None:
     """Print a line as it is, however long."""
     Console(highlight=False).print(Text(text), soft_wrap=True)
-
-
-def _rows(records: Any) -> list[tuple[str, Callable[[Record], Text | str]]]:
-    rows: list[tuple[str, Callable[[Record], Text | str]]] = [
-        ("unit", lambda r: "none" if r["unit"] == "1" else r["unit"]),
-        ("range", lambda r: f"{r['range'][0]:.3g} to {quantity(r['range'][1], r['unit'])}"),
-        ("median uncertainty of a pixel alone", lambda r: quantity(r["median_uncertainty"], r["unit"])),
-        ("filled in by the prior", lambda r: f"{r['filled_pixels']} pixels"),
-        ("prior", priors_in_words),
-        ("iterations", lambda r: str(r["iterations"])),
-        ("relative gap", lambda r: f"{r['relative_gap']:.2g}"),
-        ("time", lambda r: f"{r['seconds']:.2f} s"),
-        ("status", _status),
-    ]
-    if any(record["error"] is not None for record in records):
-        rows += [
-            ("rmse against the truth", lambda r: _error(r, "rmse")),
-            ("  conventional, pixel by pixel", lambda r: _error(r, "rmse", "conventional")),
-            ("median absolute error", lambda r: _error(r, "median_absolute")),
-            ("  conventional, pixel by pixel", lambda r: _error(r, "median_absolute", "conventional")),
-        ]
-    return rows
 
 
 def _status(record: Record) -> Text:
@@ -72,3 +57,22 @@ def _error(record: Record, kind: str, of: str | None = None) -> str:
     if error is not None and of is not None:
         error = error.get(of)
     return quantity(None if error is None else error[kind], record["unit"])
+
+
+_ROWS: list[tuple[str, Callable[[Record], Text | str]]] = [
+    ("unit", lambda r: "none" if r["unit"] == "1" else r["unit"]),
+    ("range", lambda r: f"{r['range'][0]:.3g} to {quantity(r['range'][1], r['unit'])}"),
+    ("median uncertainty", lambda r: quantity(r["median_uncertainty"], r["unit"])),
+    ("filled in by prior", lambda r: f"{r['filled_pixels']} pixels"),
+    ("prior", priors_in_words),
+    ("iterations", lambda r: str(r["iterations"])),
+    ("relative gap", lambda r: f"{r['relative_gap']:.2g}"),
+    ("time", lambda r: f"{r['seconds']:.2f} s"),
+    ("status", _status),
+]
+_ERRORS: list[tuple[str, Callable[[Record], Text | str]]] = [
+    ("rmse", lambda r: _error(r, "rmse")),
+    ("  conventional", lambda r: _error(r, "rmse", "conventional")),
+    ("median error", lambda r: _error(r, "median_absolute")),
+    ("  conventional", lambda r: _error(r, "median_absolute", "conventional")),
+]

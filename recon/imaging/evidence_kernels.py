@@ -10,81 +10,72 @@ from numba import prange
 
 from recon.kernels import COMPILE
 
-# There is no NaN here, and a largest value is found eight at a time only where none can be.
+# No NaN occurs here, and only where none can is a largest value found several at a time.
 NO_NAN = COMPILE | {"fastmath": COMPILE["fastmath"] | {"nnan"}}
 
 
-@numba.njit(**NO_NAN)
-def _add(score, run, weight):
-    """Add weight times the run to the score; return the highest score there."""
-    highest = np.float32(0.0)
-    for m in range(run.size):
-        s = score[m] + weight * run[m]
-        score[m] = s
-        highest = max(highest, s)
-    return highest
+@numba.njit(parallel=True, **NO_NAN)
+def pooled(begin, phase, start, kind, evidence, scene, window, place, top):
+    """Write the place, in bins, where the pooled evidence is largest, and the evidence there.
 
+    The evidence for a bin is scene[bin] plus the sum over tags, of all pixels in the window around, of
+    window[offset] evidence[kind of its pixel, phase of the tag, bin - begin of the tag], round the period.
 
-@numba.njit(parallel=True, **COMPILE)
-def pooled(y, start, used, kind, evidence, first, scene, period, window, place, top):
-    """Write the place where the pooled evidence is largest, in [0, period), and the evidence there.
+    begin, phase: (tags,), those of pixel q at start[q] to start[q + 1]; kind: (rows, columns), -1 = skip.
+    evidence: (kinds, phases, length) float32, 0 or more; scene: (bins,) float32, 0 or more, length < bins.
+    window: (2 r + 1, 2 r + 1) float32. top stays 0 where no tag is in the window.
 
-    The evidence for depth z is the sum over tags, of all pixels in the window around, of
-    window[offset] evidence[kind of pixel](y - z); a kind is one ratio of signal to background.
-
-    y, start: as in `detection_time_kernels`; kind: (rows, columns), which row of `evidence` serves a pixel.
-    evidence: (kinds, phases, length) float32; [., f, b] belongs to a tag (f + 1/2) / phases of a bin above a bin
-        edge, for the depth at the centre of the bin `first + b` from the tag's.
-    window: (2 r + 1, 2 r + 1) float32 weights. top stays 0 where no tag is in the window.
+    A bin near either end of the period stands in the score twice; the copies from `length` on to
+    `length + bins` receive all there is. Adding never lowers a score, so the highest seen while
+    adding is the highest there is, and no pass over all bins is needed.
     """
-    rows, columns = used.shape
+    rows, columns = kind.shape
     reach = window.shape[0] // 2
-    phases, length = evidence.shape[1:]
-    bins = scene.size
-    per_bin = bins / period
+    length, bins = evidence.shape[2], scene.size
+    empty = np.concatenate((scene, scene, scene))[: bins + 2 * length]
     for i in prange(rows):
-        score = scene.copy()
+        score = empty.copy()
         for j in range(columns):
-            best, at = np.float32(0.0), 0
+            best, at, written = np.float32(0.0), 0, 0
+            first_column, last_column = max(j - reach, 0), min(j + reach, columns - 1)
             for a in range(max(i - reach, 0), min(i + reach + 1, rows)):
-                for b in range(max(j - reach, 0), min(j + reach + 1, columns)):
+                for b in range(first_column, last_column + 1):
                     weight = window[a - i + reach, b - j + reach]
-                    if not used[a, b] or weight == 0.0:
+                    if kind[a, b] < 0 or weight == 0.0:
                         continue
-                    q = a * columns + b
-                    for k in range(start[q], start[q + 1]):
-                        x = y[k] * per_bin
-                        whole = int(x)
-                        run = evidence[kind[a, b], min(int((x - whole) * phases), phases - 1)]
-                        begin = (whole + first) % bins
-                        straight = min(length, bins - begin)
-                        highest = _add(score[begin : begin + straight], run[:straight], weight)
-                        if straight < length:
-                            highest = max(highest, _add(score, run[straight:], weight))
-                        if highest > best:  # scores only rise, so the last highest is the highest
-                            best, at = highest, begin
+                    for k in range(start[a * columns + b], start[a * columns + b + 1]):
+                        run = evidence[kind[a, b], phase[k]]
+                        bin_ = begin[k]
+                        while bin_ < bins + length:
+                            highest = np.float32(0.0)
+                            for m in range(length):
+                                s = score[bin_ + m] + weight * run[m]
+                                score[bin_ + m] = s
+                                highest = max(highest, s)
+                            if highest > best:
+                                best, at = highest, bin_
+                            bin_ += bins
+                        written += length
             if best > 0.0:
-                for m in range(length):
-                    if score[(at + m) % bins] == best:
-                        at = (at + m) % bins
-                        break
-                place[i, j] = _vertex(score, at, bins) / per_bin
+                while score[at] != best:
+                    at += 1
+                place[i, j] = _vertex(score, at) % bins
                 top[i, j] = best
-            for a in range(max(i - reach, 0), min(i + reach + 1, rows)):
-                for b in range(max(j - reach, 0), min(j + reach + 1, columns)):
-                    q = a * columns + b
-                    for k in range(start[q], start[q + 1]):
-                        begin = (int(y[k] * per_bin) + first) % bins
-                        straight = min(length, bins - begin)
-                        score[begin : begin + straight] = scene[begin : begin + straight]
-                        score[: length - straight] = scene[: length - straight]
+            if written > bins:
+                score[:] = empty
+            elif written:
+                for a in range(max(i - reach, 0), min(i + reach + 1, rows)):
+                    q = a * columns
+                    for k in range(start[q + first_column], start[q + last_column + 1]):
+                        for bin_ in range(begin[k], bins + length, bins):
+                            for m in range(bin_, bin_ + length):
+                                score[m] = empty[m]
 
 
-@numba.njit(**COMPILE)
-def _vertex(score, at, bins):
-    """Return the place, in bins, of the top of the parabola through the highest bin and its neighbours."""
-    before, here, after = score[at - 1], score[at], score[(at + 1) % bins]
-    bend = 2.0 * here - before - after
-    shift = 0.5 * (after - before) / bend if bend > 0.0 else 0.0
-    place = at + 0.5 + min(max(shift, -0.5), 0.5)
-    return place - bins * math.floor(place / bins)
+@numba.njit(**NO_NAN)
+def _vertex(score, at):
+    """Return the place of the top of the parabola through the highest bin and its neighbours."""
+    if at == 0 or at == score.size - 1:
+        return at + 0.5
+    rise, bend = score[at + 1] - score[at - 1], 2.0 * score[at] - score[at - 1] - score[at + 1]
+    return at + 0.5 + (0.5 * rise / bend if bend > 0.0 else 0.0)

@@ -150,13 +150,22 @@ class DetectionTimes(Likelihood):
         return self._derivatives(z)[2]
 
     def fisher_information(self, z: np.ndarray) -> np.ndarray:
-        """Return the expected curvature of the pixel's number of tags, if z is true."""
+        """Return the expected curvature of the pixel's number of tags, if z is true.
+
+        Exact tags tell as much at any depth; how much a coarse clock tells depends on its phase.
+        """
+        return self._information(z) if self.pulse.interval > 0.0 else self._information_anywhere.copy()
+
+    @cached_property
+    def _information_anywhere(self) -> np.ndarray:
+        return self._information(np.zeros(self.shape))
+
+    def _information(self, z: np.ndarray) -> np.ndarray:
         from recon.likelihoods import detection_time_kernels as kernels
 
-        pulse = self.pulse
-        quadrature = 2.0 * pulse.step  # a quarter of the finest detail
-        coarse = pulse.interval > 0.0
-        stride = pulse.interval * max(1.0, quadrature // pulse.interval) if coarse else quadrature
+        coarse = self.pulse.interval > 0.0
+        quadrature = 2.0 * self.pulse.step  # a quarter of the finest detail
+        stride = self.pulse.interval * max(1.0, quadrature // self.pulse.interval) if coarse else quadrature
         out = np.zeros(self.shape)
         kernels.information(np.asarray(z, np.float64), *self._tags, stride, coarse, *self._table, out)
         return out
@@ -181,7 +190,8 @@ class DetectionTimes(Likelihood):
             y = self.y + self.pulse.interval * np.round((y - self.y) / self.pulse.interval)
         other = object.__new__(type(self))
         other.__dict__.update(self.__dict__)
-        other.__dict__.pop("_best", None)
+        for name in ("_best", "_information_anywhere"):
+            other.__dict__.pop(name, None)
         other.y = kernels.ranges(y, self.start, self.shape[1], np.zeros((1, 1)), 1.0, period)
         return other
 

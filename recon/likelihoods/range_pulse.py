@@ -61,6 +61,22 @@ class RangePulse:
     core: float
     log_concave: bool
 
+    @property
+    def knots(self) -> np.ndarray:
+        """Where the pieces start, m."""
+        return self.low + self.step * np.arange(len(self.pieces))
+
+    def density(self, u: np.ndarray) -> np.ndarray:
+        """Return p at any u (m), 1/m."""
+        u = np.asarray(u, np.float64)
+        x = (u - self.low - self.period * np.floor((u - self.low) / self.period)) / self.step
+        cell = np.minimum(x.astype(np.intp), len(self.pieces) - 1)
+        v = x - cell
+        logarithm = np.zeros_like(x)
+        for power in range(5, -1, -1):
+            logarithm = logarithm * v + self.pieces[cell, power]
+        return np.exp(np.where(v <= 1.0, logarithm, -np.inf))
+
     def sharpest(self, floor: np.ndarray) -> np.ndarray:
         """Return the largest -(log(p + c))'' over u, 1/m^2, for every floor c > 0 (1/m)."""
         p, slope = np.exp(self.pieces[:, 0]), self.pieces[:, 1] / self.step

@@ -12,6 +12,7 @@ from recon.imaging.reflectivity import counting_likelihood
 
 if TYPE_CHECKING:
     from recon.imaging import Reconstruction
+    from recon.likelihoods import Likelihood
 
 Acquisition = Counts | TimeTags | Frames
 
@@ -51,19 +52,20 @@ def pixel_by_pixel(acquisition: Acquisition, reconstruction: Reconstruction) -> 
     depth: maximum likelihood from the pixel's own tags, at the reconstructed reflectivity.
     electron_yield: electrons over expected primaries.
     """
-    images = {name: _conventional(name, acquisition, reconstruction) for name in reconstruction.images}
-    for name, image in images.items():
-        image[reconstruction.images[name].filled] = np.nan
-    return images
+    return {name: _conventional(name, acquisition, reconstruction) for name in reconstruction.images}
 
 
 def _conventional(name: str, acquisition: Acquisition, reconstruction: Reconstruction) -> np.ndarray:
     if isinstance(acquisition, Frames):
-        electrons = detections(acquisition).astype(np.float64)
-        return (electrons / (acquisition.frames * acquisition.dose)).astype(np.float32)
+        electrons = detections(acquisition) / (acquisition.frames * acquisition.dose)
+        usable = True if acquisition.mask is None else acquisition.mask
+        return np.where(usable, electrons, np.nan).astype(np.float32)
     if name == "depth":
         from recon.likelihoods.detection_times import DetectionTimes
 
-        return DetectionTimes(acquisition, reconstruction.reflectivity.image).estimate()
-    counts = acquisition.counts() if isinstance(acquisition, TimeTags) else acquisition
-    return counting_likelihood(counts).estimate()
+        likelihood: Likelihood = DetectionTimes(acquisition, reconstruction.reflectivity.image)
+    else:
+        likelihood = counting_likelihood(
+            acquisition.counts() if isinstance(acquisition, TimeTags) else acquisition
+        )
+    return np.where(likelihood.has_data, likelihood.estimate(), np.float32(np.nan))

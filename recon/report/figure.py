@@ -175,4 +175,4 @@ def _filled(picture: Picture) -> str:
     share = 100.0 * float(np.mean(picture.image.filled))
     if not share:
         return "data in every pixel"
-    return f"grey: no data, filled in by the prior ({share:.2g} % of pixels)"
+    return f"grey: no usable data, filled in by the prior ({share:.2g} % of pixels)"

@@ -53,8 +53,8 @@ def spread(image: np.ndarray, share: float = 0.005) -> tuple[float, float]:
 
 
 def symmetric(image: np.ndarray) -> tuple[float, float]:
-    """Return limits about zero that leave out the largest hundredth."""
-    high = spread(np.abs(image), share=0.01)[1]
+    """Return limits about zero that leave out the largest twentieth."""
+    high = spread(np.abs(image), share=0.05)[1]
     return -high, high
 
 

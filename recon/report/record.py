@@ -51,7 +51,7 @@ def image_record(
         "range": [float(image.image.min()), float(image.image.max())],
         "median_uncertainty": float(np.median(image.uncertainty[seen])) if seen.any() else None,
         "filled_pixels": int(np.count_nonzero(image.filled)),
-        "priors": [{"name": name_of(prior), "weight": prior.weight} for prior in image.priors],
+        "priors": [_prior_record(prior) for prior in image.priors],
         "bounds": list(image.bounds),
         "status": {
             "name": image.status.name.lower(),
@@ -79,6 +79,11 @@ def image_record(
 def name_of(prior: Prior) -> str:
     """Return the name of a prior as the command line spells it: "total-variation" for a TotalVariation."""
     return re.sub(r"(?<=[a-z0-9])(?=[A-Z])", "-", type(prior).__name__).lower()
+
+
+def _prior_record(prior: Prior) -> dict[str, Any]:
+    weighted = getattr(prior, "edge_weights", None) is not None
+    return {"name": name_of(prior), "weight": prior.weight, "edge_weights": weighted}
 
 
 def _error(image: np.ndarray, truth: np.ndarray) -> dict[str, float]:

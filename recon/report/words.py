@@ -20,8 +20,12 @@ def spelled(name: str) -> str:
 
 def priors_in_words(record: Mapping[str, Any]) -> str:
     """Return the priors of an image record and their weights."""
-    terms = (f"{spelled(term['name'])}, weight {term['weight']:.3g}" for term in record["priors"])
-    return " + ".join(terms) or "none"
+    return " + ".join(_prior_in_words(prior) for prior in record["priors"]) or "none"
+
+
+def _prior_in_words(prior: Mapping[str, Any]) -> str:
+    edges = " with edge weights" if prior["edge_weights"] else ""
+    return f"{spelled(prior['name'])}{edges}, weight {prior['weight']:.3g}"
 
 
 def is_converged(record: Mapping[str, Any]) -> bool:

@@ -18,11 +18,27 @@ def test_counts_by_themselves_are_the_inverse_of_the_click_law(counts, result):
 
 def test_frames_by_themselves_are_electrons_over_primaries(image):
     rng = np.random.default_rng(0)
-    frames = recon.Frames(rng.poisson(2.0, (5, *image.image.shape)), 0.5)
+    mask = np.arange(16)[:, None] > np.zeros(20)
+    frames = recon.Frames(rng.poisson(2.0, (5, *mask.shape)), 0.5, mask)
     alone = pixel_by_pixel(frames, Reconstruction(electron_yield=image))["electron_yield"]
     expected = frames.counts.sum(axis=0) / 2.5
     np.testing.assert_allclose(alone[1:], expected[1:], rtol=1e-6)
     assert np.isnan(alone[0]).all()
+
+
+def test_tags_by_themselves_are_the_likeliest_depth():
+    pulse = recon.GaussianPulse(1e-9)
+    times = np.array([20e-9, 60e-9, 60.5e-9, 61e-9, 33e-9])
+    tags = recon.TimeTags(
+        [0, 0, 0, 0, 1], [0, 0, 0, 0, 1], times, shape=(2, 2), trials=10, period=1e-7, pulse=pulse,
+        gain=0.1, background=0.01,
+    )  # fmt: skip
+    result = recon.reconstruct(tags, tolerance=1e-2)
+    alone = pixel_by_pixel(tags, result)["depth"]
+    metres = 299792458.0 / 2
+    assert alone[0, 0] == pytest.approx(60.5e-9 * metres, rel=1e-3)
+    assert alone[1, 1] == pytest.approx(33e-9 * metres, rel=1e-3)
+    assert np.isnan(alone[[0, 1], [1, 0]]).all()
 
 
 def test_many_frames_do_not_overflow():

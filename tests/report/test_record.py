@@ -45,6 +45,13 @@ def test_an_image_is_described(image):
     assert len(set(map(len, record["trace"].values()))) == 1
 
 
+def test_priors_say_whether_they_have_edge_weights(image):
+    plain, weighted = priors.TotalVariation(2.0), priors.TotalVariation(3.0, edge_weights=np.ones((16, 20)))
+    record = image_record(replace(image, priors=(plain, weighted)))
+    said = words.priors_in_words(record)
+    assert said == "total variation, weight 2 + total variation with edge weights, weight 3"
+
+
 def test_errors_leave_out_pixels_without_a_value(image):
     truth = image.image.astype(float) - 0.3
     truth[2, 2] = np.nan

@@ -66,6 +66,19 @@ def test_every_term_of_a_sum_is_checked():
         check_prior(HuberVariation(0.7) + broken_priors.NormTooSmall(0.7))
 
 
+def test_a_prior_that_is_conic_only_is_asked_for_no_steps():
+    class Conic(HuberVariation):
+        conic_only = True
+
+        def value(self, x):
+            return HuberVariation(self.weight, self.rounding).value(x)
+
+        def forward(self, x, v=None):
+            raise NotImplementedError
+
+    check_prior(Conic(0.7))
+
+
 def test_an_object_of_the_wrong_kind_is_named():
     with pytest.raises(ConformanceError, match="HuberVariation: is not a likelihood"):
         check_likelihood(HuberVariation(0.7))
