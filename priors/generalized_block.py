@@ -98,13 +98,15 @@ def minimise_over_slopes(prior: GeneralizedVariation, image: np.ndarray, toleran
     scale = max(float(np.ptp(x)), 1e-6)
     tau = scale / max(prior.weight, 1e-12) / 4.0
     sigma = 1.0 / (tau * block.norm_squared)
-    best, bound = np.inf, -np.inf
-    for _ in range(200):
+    best, bound, still = np.inf, -np.inf, 0
+    while still < 5:  # checks in a row without progress: single precision ends here
         for _ in range(100):
             block.step(x, sigma, tau, 1.9, adjoint, True)
         value, _ = block.certify(x, adjoint, True)
-        best = min(best, value)
-        bound = max(bound, float(np.sum(x * adjoint, dtype=np.float64)))
-        if best - bound <= tolerance * max(best, 1e-30):
+        reached = float(np.sum(x * adjoint, dtype=np.float64))
+        progress = max(best - value, reached - bound) > 0.1 * tolerance * abs(value)
+        still = 0 if progress else still + 1
+        best, bound = min(best, value), max(bound, reached)
+        if best - bound <= tolerance * best:
             break
     return best

@@ -116,7 +116,7 @@ class GeneralizedVariation(Prior):
         return projected * min(1.0, self.weight / largest) if largest > 0.0 else projected
 
     def value(self, x: np.ndarray) -> float:
-        """Return the weighted penalty, minimised over v to a relative gap of 1e-6 (or as near as float32 gets)."""
+        """Return the weighted penalty, minimised over v to a relative gap of 1e-6, or as near as float32 gets."""
         from priors.generalized_block import minimise_over_slopes
 
         return minimise_over_slopes(self, require_image(x))

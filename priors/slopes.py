@@ -73,8 +73,8 @@ class Slopes:
     def adjoint(self, y: np.ndarray) -> np.ndarray:
         """Return the image part of K' y."""
         out = np.zeros(self.shape, np.result_type(y.dtype, np.float32))
-        down = (self.weights[0] * self.inverse_spacing[0] * y[0])[:-1]
-        right = (self.weights[1] * self.inverse_spacing[1] * y[1])[:, :-1]
+        down = (self.weights[0] * (self.inverse_spacing[0] * y[0]))[:-1]
+        right = (self.weights[1] * (self.inverse_spacing[1] * y[1]))[:, :-1]
         out[:-1] -= down
         out[1:] += down
         out[:, :-1] -= right

@@ -139,7 +139,7 @@ def _reconstruct(commands: argparse._SubParsersAction, common: argparse.Argument
         help="relative gap between objective and dual value to stop at, in (0, 1) (default: %(default)g)",
     )
     command.add_argument(
-        "--max-iterations", metavar="N", type=_whole, default=10_000,
+        "--max-iterations", metavar="N", type=_whole, default=30_000,
         help="iterations after which to stop in any case (default: %(default)d)",
     )
     command.add_argument(

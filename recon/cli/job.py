@@ -30,7 +30,7 @@ class Settings:
 
     prior: Prior | None = None
     tolerance: float = 1e-4
-    max_iterations: int = 10_000
+    max_iterations: int = 30_000
 
 
 @dataclass(frozen=True, eq=False)

@@ -14,7 +14,7 @@ from recon.solvers import State
 
 def reconstruct(
     acquisition: Counts | TimeTags | Frames, prior: Prior | Sum | None = None, *,
-    reflectivity_prior: Prior | Sum | None = None, tolerance: float = 1e-4, max_iterations: int = 10_000,
+    reflectivity_prior: Prior | Sum | None = None, tolerance: float = 1e-4, max_iterations: int = 30_000,
     callback: Callable[[str, State], object] | None = None,
 ) -> Reconstruction:
     """Return the images that the acquisition allows, each with its uncertainty and its certificate.

@@ -20,7 +20,7 @@ class Effort:
     """How closely to solve, and whom to tell; see `recon.solve`."""
 
     tolerance: float = 1e-4
-    max_iterations: int = 10_000
+    max_iterations: int = 30_000
     callback: Callable[[str, State], object] | None = None
     """Called with the name of the image and the state."""
 

@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     import cvxpy as cp
 
 _SMALLEST = 1e-300
+FAINT = 1e-2  # expected detections a trial
 
 
 class BernoulliTrials(Likelihood):
@@ -145,13 +146,19 @@ class BernoulliTrials(Likelihood):
 
     def gradient(self, x: np.ndarray) -> np.ndarray:
         """Return gain (n - k - k / (exp(mu) - 1))."""
-        with np.errstate(divide="ignore", over="ignore"):
+        with np.errstate(divide="ignore", over="ignore", invalid="ignore"):
             detecting = np.where(self._k > 0.0, self._k / np.expm1(self._mu(x)), 0.0)
         return self._gain * (self._n - self._k - detecting)
 
     def curvature(self, x: np.ndarray) -> np.ndarray:
         """Return gain^2 k exp(mu) / (exp(mu) - 1)^2."""
-        return self._k * self._curvature_of_one(x)
+        return self._weighted(self._k, self._curvature_of_one(x))
+
+    @staticmethod
+    def _weighted(detections: np.ndarray, curvature: np.ndarray) -> np.ndarray:
+        """Return the product, zero where there is no detection however sharp its curvature would be."""
+        with np.errstate(invalid="ignore"):
+            return np.where(detections > 0.0, detections * curvature, 0.0)
 
     def _curvature_of_one(self, x: np.ndarray) -> np.ndarray:
         half = np.maximum(self._mu(x), _SMALLEST) / 2.0
@@ -169,7 +176,7 @@ class BernoulliTrials(Likelihood):
             wanted, limit = self._stop_after, self._most_trials
             trials = limit * binom.cdf(wanted - 1, limit, p) + wanted / p * binom.sf(wanted, limit + 1, p)
             expected = np.where(self._has_data, trials * p, 0.0)
-        return expected * self._curvature_of_one(x)
+        return self._weighted(expected, self._curvature_of_one(x))
 
     def residuals(self, x: np.ndarray) -> np.ndarray:
         """See `Likelihood.residuals`."""
@@ -180,7 +187,7 @@ class BernoulliTrials(Likelihood):
         """Return the same likelihood on data drawn at x under the same stopping rule."""
         rng = np.random.default_rng(seed)
         p = -np.expm1(-np.maximum(self._mu(drawing_image(x, self.shape)), _SMALLEST))
-        other = object.__new__(BernoulliTrials)
+        other = object.__new__(type(self))
         other.__dict__.update(self.__dict__)
         if self._stop_after is None:
             other._k = rng.binomial(self._n.astype(np.int64), p).astype(np.float64)
@@ -207,7 +214,7 @@ class BernoulliTrials(Likelihood):
         for _ in range(100):
             with np.errstate(over="ignore"):
                 h = 1.0 / np.expm1(mu)
-            slope = h * (1.0 + h) * mu
+            slope = (h * mu) * (1.0 + h)
             half = 0.5 * (linear + s * self._k * (h - slope))
             root = half + np.sqrt(half * half + s * self._k * slope * mu)
             # Where half is far below zero the sum above cancels; the other form of the root does not.
@@ -253,7 +260,11 @@ class BernoulliTrials(Likelihood):
         )
 
     def expression(self, x: cp.Expression) -> tuple[cp.Expression, list[Any]]:
-        """See `Likelihood.expression`: -log(1 - exp(-mu)) = s becomes exp(-s) + exp(-mu) <= 1."""
+        """See `Likelihood.expression`: -log(1 - exp(-mu)) = s becomes exp(-s) + exp(-mu) <= 1.
+
+        Where every pixel is faint a cone's tolerance would swallow mu, and -log(mu) + mu / 2 stands for
+        it; the error is at most k mu^2 / 24.
+        """
         import cvxpy as cp
 
         gain = np.broadcast_to(self._gain, self.shape).astype(np.float64)
@@ -265,5 +276,7 @@ class BernoulliTrials(Likelihood):
         seen = np.nonzero(self._k > 0.0)
         if not seen[0].size:
             return total, []
+        if float(np.max(self._mu(self.estimate())[self._has_data])) < FAINT:
+            return total + self._k[seen] @ (0.5 * mu[seen] - cp.log(mu[seen])), []
         s = cp.Variable(seen[0].size)
         return total + self._k[seen] @ s, [cp.exp(-s) + cp.exp(-mu[seen]) <= 1.0]

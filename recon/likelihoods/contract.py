@@ -91,7 +91,7 @@ class Likelihood(ABC):
 
     @abstractmethod
     def residuals(self, x: np.ndarray) -> np.ndarray:
-        """Return the deviance residuals: sign(data - expected) sqrt(2 value_map), zero without data."""
+        """Return the deviance residuals: sqrt(2 value_map), positive where the data ask for a larger x."""
 
     @abstractmethod
     def draw(self, x: np.ndarray, seed: int | np.random.Generator) -> Likelihood:

@@ -161,8 +161,8 @@ def _until_next(
     iteration: int, gap: float, previous: tuple[int, float] | None, tolerance: float
 ) -> int:
     """Return after how many iterations to measure again: when the gap, falling as lately, is in tolerance."""
-    most = max(WINDOW, iteration // 2)
+    most = min(max(WINDOW, iteration // 2), 25 * WINDOW)
     if previous is None or not 0.0 < gap < previous[1]:
-        return most
+        return min(most, 5 * WINDOW)
     rate = math.log(previous[1] / gap) / (iteration - previous[0])
     return min(max(math.ceil(math.log(gap / tolerance) / rate), 5), most) if gap > tolerance else most

@@ -26,7 +26,7 @@ SOLVERS: dict[str, Solver] = {
 
 def solve(
     problem: Problem, solver: str | Solver | None = None, tolerance: float = 1e-4,
-    max_iterations: int = 10_000, start: np.ndarray | None = None,
+    max_iterations: int = 30_000, start: np.ndarray | None = None,
     callback: Callable[[State], object] | None = None,
 ) -> Solution:
     """Minimise likelihood + priors within the bounds, and say how closely it was done.

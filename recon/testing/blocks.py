@@ -36,7 +36,16 @@ class Reference:
 
 
 def check_block(prior: Any, shape: tuple[int, int], rng: np.random.Generator) -> None:
-    """Check step, mark, moved, forget and certify over some steps of several lengths."""
+    """Check step, mark, moved and forget over some steps of several lengths, and certify after them."""
+    for size, block, reference in check_steps(prior, shape, rng):
+        _check_certificate(prior, block, reference, shape, size, rng)
+
+
+def check_steps(
+    prior: Any, shape: tuple[int, int], rng: np.random.Generator
+) -> list[tuple[float, Any, Reference]]:
+    """Check the steps; return for every length the size of its images, the block, and the reference."""
+    walked = []
     norm = float(np.sqrt(prior.norm_squared(shape)))
     for size, ratio in ((0.1, 1.0), (1.0, 0.1), (10.0, 1.0), (100.0, 10.0)):
         block, reference = prior.block(shape), Reference(prior, shape)
@@ -52,7 +61,8 @@ def check_block(prior: Any, shape: tuple[int, int], rng: np.random.Generator) ->
             claim = "the root of moved is not the distance of the duals from mark"
             require_close(prior, claim, np.sqrt(block.moved()), distance, allowed)
             block.forget()
-        _check_certificate(prior, block, reference, shape, size, rng)
+        walked.append((size, block, reference))
+    return walked
 
 
 def _check_step(
