@@ -30,7 +30,7 @@ class GeneralizedBlock:
         self._weights = tuple(np.ascontiguousarray(w[keep]) for w in slopes.weights)
         self._exists = tuple(np.ascontiguousarray(e[keep]) for e in slopes.exists)
         self._inverse = tuple(np.float32(i) for i in slopes.inverse_spacing)
-        self._limits = np.float32(prior.weight), np.float32(prior.weight * prior.second_order)
+        self._limits = tuple(np.float32(limit) for limit in prior.limits)
         steep = 4.0 * sum(i * i for i in slopes.inverse_spacing)
         lightest = min((float(w[w > 0.0].min()) for w in self._weights if (w > 0.0).any()), default=1.0)
         self._rate = np.float32(1.9 * lightest**2 / steep)
@@ -95,11 +95,10 @@ def minimise_over_slopes(prior: GeneralizedVariation, image: np.ndarray, toleran
     x = np.asarray(image, np.float32)
     block = prior.block(x.shape)
     adjoint = np.zeros_like(x)
-    scale = max(float(np.ptp(x)), 1e-6)
-    tau = scale / max(prior.weight, 1e-12) / 4.0
+    tau = max(float(np.ptp(x)), 1e-6) / prior.limits[0] / 4.0
     sigma = 1.0 / (tau * block.norm_squared)
     best, bound, still = np.inf, -np.inf, 0
-    while still < 5:  # checks in a row without progress: single precision ends here
+    while still < 20:  # checks in a row without progress: single precision ends here
         for _ in range(100):
             block.step(x, sigma, tau, 1.9, adjoint, True)
         value, _ = block.certify(x, adjoint, True)

@@ -16,16 +16,18 @@ if TYPE_CHECKING:
 
     from priors.generalized_block import GeneralizedBlock
 
+CONIC_PIXELS = 4096
+
 
 @dataclass(frozen=True, eq=False)
 class GeneralizedVariation(Prior):
     """weight times the second-order total generalized variation of the image.
 
-        weight * min over v of  sum |D x - v|  +  second_order * sum |E v|
+        weight * min over v of  sum |D x - v|  +  second_order * h * sum |E v|
 
     D x are the forward differences over the pixel spacing (times the edge weight, as is v in that term);
     v is a field of slopes; E v is its symmetrised difference (v_rr, v_cc, (v_rc + v_cr) / sqrt(2)), over
-    the spacing; |.| is the Euclidean norm at a pixel. A plane costs nothing; an edge costs what it does
+    the spacing; |.| is the Euclidean norm at a pixel and h the geometric mean of the two spacings. A plane costs nothing; an edge costs what it does
     in total variation.
 
     weight: positive number; larger means smoother. None leaves it to be chosen from the data by
@@ -60,9 +62,17 @@ class GeneralizedVariation(Prior):
         """See `Prior.typical_weight`; as for total variation."""
         return 1.3 * information**0.5 * max(self.spacing)
 
+    @property
+    def limits(self) -> tuple[float, float]:
+        """The factors of the first-order and second-order sums, slopes being counted per h."""
+        h = (self.spacing[0] * self.spacing[1]) ** 0.5
+        return self.weight / h, self.weight * self.second_order / h
+
     def slopes(self, shape: tuple[int, int]) -> Slopes:
-        """Return the linear map K for images of `shape`."""
-        return Slopes(validation.image_shape(shape), self.spacing, self.mask, self.edge_weights)
+        """Return the linear map K for images of `shape`: with lengths in units of h, steps suit x and v alike."""
+        h = (self.spacing[0] * self.spacing[1]) ** 0.5
+        relative = self.spacing[0] / h, self.spacing[1] / h
+        return Slopes(validation.image_shape(shape), relative, self.mask, self.edge_weights)
 
     def auxiliary_shape(self, shape: tuple[int, int]) -> tuple[int, ...]:
         """Return (2, rows, columns): the slope along rows and along columns."""
@@ -93,19 +103,18 @@ class GeneralizedVariation(Prior):
     def penalty(self, p: np.ndarray) -> float:
         """See `Prior.penalty`."""
         first, second = (float(np.sum(size, dtype=np.float64)) for size in self._sizes(p))
-        return self.weight * (first + self.second_order * second)
+        return self.limits[0] * first + self.limits[1] * second
 
     def dual_prox(self, y: np.ndarray, sigma: float) -> np.ndarray:
         """Return y moved to the nearest point of the domain of g*."""
         first, second = self._sizes(y)
-        limit = self.weight * self.second_order
-        scales = self.weight / np.maximum(first, self.weight), limit / np.maximum(second, limit)
+        scales = [limit / np.maximum(size, limit) for limit, size in zip(self.limits, (first, second), strict=True)]
         return np.concatenate([y[:2] * scales[0], y[2:] * scales[1]])
 
     def conjugate(self, y: np.ndarray) -> float:
         """Return 0 inside the domain (to rounding), inf outside."""
         first, second = (float(size.max()) for size in self._sizes(y))
-        inside = first <= self.weight * (1 + 1e-5) and second <= self.weight * self.second_order * (1 + 1e-5)
+        inside = first <= self.limits[0] * (1 + 1e-5) and second <= self.limits[1] * (1 + 1e-5)
         return 0.0 if inside else np.inf
 
     def feasible(self, y: np.ndarray, shape: tuple[int, int]) -> np.ndarray:
@@ -113,21 +122,32 @@ class GeneralizedVariation(Prior):
         projected = self.dual_prox(y, 1.0)
         projected[:2] = self.slopes(shape).balancing(projected[2:])
         largest = float(np.hypot(projected[0], projected[1]).max())
-        return projected * min(1.0, self.weight / largest) if largest > 0.0 else projected
+        return projected * min(1.0, self.limits[0] / largest) if largest > 0.0 else projected
 
     def value(self, x: np.ndarray) -> float:
-        """Return the weighted penalty, minimised over v to a relative gap of 1e-6, or as near as float32 gets."""
-        from priors.generalized_block import minimise_over_slopes
+        """Return the weighted penalty, minimised over v.
 
-        return minimise_over_slopes(self, require_image(x))
+        By a conic solver for small images; for others by the primal-dual method, to a relative gap of
+        1e-6 or as near as single precision gets.
+        """
+        image = require_image(x)
+        self.check_shape(image.shape)
+        if image.size > CONIC_PIXELS:
+            from priors.generalized_block import minimise_over_slopes
+
+            return minimise_over_slopes(self, image)
+        import cvxpy as cp
+
+        expression, _ = self.expression(cp.Constant(image), image.shape)
+        return float(cp.Problem(cp.Minimize(expression)).solve(solver=cp.CLARABEL))
 
     def expression(self, x: cp.Expression, shape: tuple[int, int]) -> tuple[cp.Expression, list[Any]]:
         """See `Prior.expression`."""
         import cvxpy as cp
 
         first, second = self.slopes(shape).expression(x)
-        total = cp.sum(cp.norm(first, 2, axis=0)) + self.second_order * cp.sum(cp.norm(second, 2, axis=0))
-        return self.weight * total, []
+        sums = cp.sum(cp.norm(first, 2, axis=0)), cp.sum(cp.norm(second, 2, axis=0))
+        return self.limits[0] * sums[0] + self.limits[1] * sums[1], []
 
     def block(self, shape: tuple[int, int]) -> GeneralizedBlock:
         """See `Prior.block`."""

@@ -89,8 +89,8 @@ def open_settings(prior: Prior | Sum, likelihood: DetectionTimes, start: np.ndar
     for term in terms:
         if term.conic_only:
             raise InputError(
-                f"prior {type(term).__name__} exists only as a cvxpy expression, which depth cannot take; give"
-                " another, such as priors.TotalVariation()."
+                f"prior {type(term).__name__} exists only as a cvxpy expression, which depth cannot take;"
+                " give another, such as priors.TotalVariation()."
             )
     if all(term.weight is not None for term in terms):
         return terms

@@ -102,11 +102,10 @@ def suggested_window(likelihood: DetectionTimes) -> float:
     pulse = likelihood.pulse
     p = pulse.density(pulse.knots)
     nodes = np.geomspace(seen.min(), seen.max() * 1.001, 64)
-    gain = [
-        (pulse.step * float(np.sum((p + n) * np.log1p(p / n))) - 1.0) / (1.0 + n * pulse.period) for n in nodes
-    ]
-    each = np.interp(np.log(likelihood.noise), np.log(nodes), gain)
-    mean = float(np.sum(tags * each)) / tags.size
+    divergence = np.array([pulse.step * float(np.sum((p + n) * np.log1p(p / n))) - 1.0 for n in nodes])
+    signal = tags / (1.0 + likelihood.noise * pulse.period)
+    each = np.interp(np.log(likelihood.noise), np.log(nodes), divergence)
+    mean = float(np.sum(signal * each)) / tags.size
     return float(np.clip(math.sqrt(ENOUGH / (2.0 * math.pi * max(mean, 1e-12))), NARROWEST, WIDEST))
 
 

@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-import math
-
 import numba
 import numpy as np
 from numba import prange

@@ -2,7 +2,7 @@
 
 y are the tags' ranges, those of pixel q at start[q] to start[q + 1], ascending; noise (rows, columns) is
 the background per metre over the expected signal; low, step, pieces, period describe p (`RangePulse`).
-All sums are float64; the cost is linear in the number of tags.
+Pixels that are not used are left as they are. All sums are float64; the cost is linear in the tags.
 """
 
 from __future__ import annotations
@@ -55,7 +55,7 @@ def ranges(time, start, columns, delay, metres, period):
 
 @numba.njit(parallel=True, **COMPILE)
 def excess(z, y, start, noise, used, low, step, pieces, period, out):
-    """Write the sum over tags of log(1 + p / noise), in pixels that are used."""
+    """Write the sum over tags of log(1 + p / noise)."""
     rows, columns = used.shape
     for i in prange(rows):
         for j in range(columns):
@@ -70,7 +70,7 @@ def excess(z, y, start, noise, used, low, step, pieces, period, out):
 
 @numba.njit(parallel=True, **COMPILE)
 def derivatives(z, y, start, noise, used, share, low, step, pieces, period, gradient, curvature, signal):
-    """Write dL/dz, d2L/dz2, and the sum over tags of (p + share noise) / (p + noise), in pixels that are used."""
+    """Write dL/dz, d2L/dz2, and the sum over tags of (p + share noise) / (p + noise)."""
     rows, columns = used.shape
     for i in prange(rows):
         for j in range(columns):
@@ -89,11 +89,11 @@ def derivatives(z, y, start, noise, used, share, low, step, pieces, period, grad
 
 
 @numba.njit(parallel=True, **COMPILE)
-def information(z, y, start, noise, used, stride, interval, low, step, pieces, period, out):
-    """Write the sum over tags of the expected curvature of one tag.
+def coarse_information(z, y, start, noise, used, stride, low, step, pieces, period, out):
+    """Write the sum over tags of the expected curvature of one tag that a clock puts on multiples of stride.
 
-    A tag's expected curvature is the mean of (p' / (p + noise))^2 over its own density, (p + noise) /
-    (1 + noise period): a sum over the places that a coarse clock allows it, else an integral by the trapezoid rule.
+    It is the mean of (p' / (p + noise))^2 over the places that the clock allows, whose shares are stride
+    (p + noise) / (1 + noise period).
     """
     rows, columns = used.shape
     high = low + step * pieces.shape[0]
@@ -103,14 +103,9 @@ def information(z, y, start, noise, used, stride, interval, low, step, pieces, p
                 q = i * columns + j
                 total = 0.0
                 for k in range(start[q], start[q + 1]):
-                    u = low
-                    if interval:
-                        u += turned(y[k] - z[i, j] - low, 0.0, stride)
+                    u = low + turned(y[k] - z[i, j] - low, 0.0, stride)
                     while u < high:
                         p, slope, _ = density(u, low, step, pieces)
                         total += slope * slope / (p + noise[i, j])
                         u += stride
-                    if not interval:  # all tags alike
-                        total *= start[q + 1] - start[q]
-                        break
                 out[i, j] = total * stride / (1.0 + noise[i, j] * period)

@@ -1,8 +1,9 @@
-"""The range that fits the tags of a pixel best: the global maximum of sum over tags of log(1 + p(y - z) / noise).
+"""The best range of a pixel: the global maximum of the sum over its tags of log(1 + p(y - z) / noise).
 
-Ascents by Newton's rule with halved steps start at every tag, and on a fine grid of places that two tags
-or more can see. A start is skipped where all tags that can see it, each at the pulse's peak, would not
-reach the best found so far. Tags are sorted, so an ascent looks only at those within the pulse's length.
+Ascents by Newton's rule with halved steps start at every tag, and at the peaks on a fine grid of places
+that two tags or more can see. A place is skipped where all tags that can see it, each at the pulse's
+peak, would not reach the best found so far. Tags are sorted, so an ascent looks only at those within the
+pulse's length.
 """
 
 from __future__ import annotations
@@ -18,14 +19,15 @@ from recon.likelihoods.detection_time_kernels import density
 
 FAINT = 1e-3  # of the noise; a tag where p is lower counts as out of sight when starts are skipped
 SPACING = 0.25  # of the pulse's core, between starts
-STEPS = 60  # of one ascent
+CLOSE = 1e-7  # of the core: the step at which an ascent ends
+STEPS = 60  # most of one ascent
 
 
 @numba.njit(parallel=True, **COMPILE)
 def best(y, start, noise, used, mode, core, low, step, pieces, period, z, excess):
     """Write the best range, in [0, period), and the maximum, in pixels that are used and have a tag.
 
-    mode: where p is largest; core: a length that an ascent's step does not exceed.
+    mode: where p is largest, to within a step; core: a length that an ascent's step does not exceed.
     """
     rows, columns = used.shape
     for i in prange(rows):
@@ -51,24 +53,37 @@ def _best_of(tags, noise, mode, core, low, step, pieces, period):
                     at, top = y - mode, value
     at, top = _ascend(tags, at, noise, core, low, high, step, pieces, period)
     if n > 1:
-        peak = math.log1p(density(mode, low, step, pieces)[0] / noise)
+        peak = math.log1p(1.01 * density(mode, low, step, pieces)[0] / noise)  # it may lie between two knots
         left, right = _sight(noise, low, step, pieces)
-        last = place = -math.inf
+        spacing = SPACING * core
+        last, place = -math.inf, tags[0] - right
+        lower = _locate(tags, place + left - core, period)
+        upper = _locate(tags, place + right + core, period)
         for y in tags:
-            if y - last >= SPACING * core:
+            if y - last >= spacing:
                 last = y
                 if _bar(tags, y - mode, left, right, core, period) * peak + FAINT * n > top:
                     found, value = _ascend(tags, y - mode, noise, core, low, high, step, pieces, period)
                     if value > top:
                         at, top = found, value
+            before = middle = -math.inf
             place = max(place, y - right)
-            while place < y - left:
-                seen = _bar(tags, place, left, right, core, period)
-                if seen > 1 and seen * peak + FAINT * n > top:
-                    found, value = _ascend(tags, place, noise, core, low, high, step, pieces, period)
-                    if value > top:
-                        at, top = found, value
-                place += SPACING * core
+            while middle > -math.inf or place < y - left:
+                value = -math.inf
+                if place < y - left:
+                    lower = _climb(tags, lower, place + left - core, period)
+                    upper = _climb(tags, upper, place + right + core, period)
+                    seen = min(upper - lower, n)
+                    if seen > 1 and seen * peak + FAINT * n > top:
+                        value = _sums(tags, place, noise, low, high, step, pieces, period)[0]
+                if middle > -math.inf and before <= middle >= value:
+                    found, reached = _ascend(
+                        tags, place - spacing, noise, core, low, high, step, pieces, period
+                    )
+                    if reached > top:
+                        at, top = found, reached
+                before, middle = middle, value
+                place += spacing
     return at - period * math.floor(at / period), top
 
 
@@ -86,7 +101,7 @@ def _ascend(tags, z, noise, core, low, high, step, pieces, period):
         move = slope / bend if bend > 0.0 else math.copysign(core, slope)
         move = min(max(move, -core), core)
         while True:
-            if abs(move) < 1e-10 * core:
+            if abs(move) < CLOSE * core:
                 return z, value
             reached, new_slope, new_bend = _sums(tags, z + move, noise, low, high, step, pieces, period)
             if reached >= value:
@@ -138,3 +153,12 @@ def _sight(noise, low, step, pieces):
     while last > first and math.exp(pieces[last - 1, 0]) < FAINT * noise:
         last -= 1
     return low + step * first, low + step * last
+
+
+@numba.njit(**COMPILE)
+def _climb(tags, k, place, period):
+    """Return `_locate` of a place, from that of a lower one."""
+    n = tags.size
+    while tags[k % n] + (k // n) * period < place:
+        k += 1
+    return k

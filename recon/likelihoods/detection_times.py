@@ -19,7 +19,7 @@ from recon.likelihoods.range_pulse import range_pulse
 from recon.validation import NONNEGATIVE, number_or_map
 
 FLOOR = 1e-6  # least background over a period, in expected signal detections
-MOST = 1e12  # background over signal; beyond it a tag tells nothing
+MOST = 1e12  # largest background over a period; beyond it a tag tells nothing
 SHARE = 0.1  # of the background, counted as pulse where the pulse's log has no bounded curvature
 
 
@@ -29,17 +29,21 @@ class DetectionTimes(Likelihood):
         value(z) = sum over tags of  log(p(y - z^) + noise) - log(p(y - z) + noise)
 
     with y the range from which an echo arrives at the tag's time, p the pulse as a periodic density of
-    range (`RangePulse`), noise = background / (gain reflectivity) over the unambiguous range, and z^ the
-    pixel's best depth. The number of detections tells nothing about depth, so it is taken as given: `draw`
-    keeps it, and `fisher_information` is that of the tags there are.
+    range (`RangePulse`), noise the background per metre for each expected signal detection, and z^ the
+    pixel's best depth. How many detections there are tells nothing about depth, so it is taken as given:
+    `draw` keeps it, and `fisher_information` is that of the tags there are.
 
     tags: the acquisition; a tag with an `interval` has the pulse averaged over it.
-    reflectivity: (rows, columns), 0 or more, known. Where gain * reflectivity is 0, tags tell nothing.
+    reflectivity: known, 0 or more, a map or a number. Where gain * reflectivity is 0, tags tell nothing.
     background: expected other detections per trial, a number or a map; None takes that of the tags.
 
-    The background is taken to be at least a millionth of the signal. Not convex: `majorise` takes the
-    detections as signal or background with the probabilities they have at z (Dempster, Laird and Rubin
-    1977) and bounds minus the log of the pulse by a parabola, which for a Gaussian pulse it is.
+    The background is taken to be at least a millionth of the signal. Not convex: `majorise` takes each
+    tag as signal or background with the probabilities it has at z (Dempster, Laird and Rubin 1977) and
+    bounds minus the log of the pulse by a parabola, which for a Gaussian pulse it is.
+
+    pulse: the `RangePulse`.
+    y, start: (tags,) ranges in m, ascending within a pixel, those of pixel q at start[q] to start[q + 1].
+    noise: (rows, columns), 1/m.
 
     Raises InputError.
     """
@@ -47,8 +51,10 @@ class DetectionTimes(Likelihood):
     convex = False
 
     def __init__(
-        self, tags: TimeTags, reflectivity: np.ndarray, background: ArrayLike | None = None
+        self, tags: TimeTags, reflectivity: ArrayLike, background: ArrayLike | None = None
     ) -> None:
+        from recon.likelihoods import detection_time_kernels as kernels
+
         if not isinstance(tags, TimeTags):
             raise InputError(f"tags is a {type(tags).__name__}; give a recon.TimeTags.")
         reflectivity = np.asarray(number_or_map(reflectivity, "reflectivity", tags.shape, NONNEGATIVE))
@@ -62,17 +68,12 @@ class DetectionTimes(Likelihood):
         with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
             ratio = np.clip(background / signal, FLOOR, MOST)
         self.noise = np.where(signal > 0.0, ratio, MOST) / self.pulse.period
+        self._law = tags.pulse
+        self._metres = SPEED_OF_LIGHT / (2.0 * tags.refractive_index)  # per second
         self.start = tags.start
-        self._shape_in_time = tags.pulse
-        self._metres = SPEED_OF_LIGHT / (2.0 * tags.refractive_index)
-        self.y = self._ranges(tags)
-
-    def _ranges(self, tags: TimeTags) -> np.ndarray:
-        from recon.likelihoods import detection_time_kernels as kernels
-
         delay = np.atleast_2d(np.asarray(tags.time_zero + tags.offset, np.float64))
-        return kernels.ranges(
-            tags.time, tags.start, tags.shape[1], delay, self._metres, self.pulse.period
+        self.y = kernels.ranges(
+            tags.time, tags.start, self.shape[1], delay, self._metres, self.pulse.period
         )
 
     @property
@@ -100,7 +101,7 @@ class DetectionTimes(Likelihood):
 
     @cached_property
     def _best(self) -> tuple[np.ndarray, np.ndarray]:
-        """The best depth of every pixel, and the sum of log(p + noise) there."""
+        """The best depth of every pixel, and the sum over its tags of log(1 + p / noise) there."""
         from recon.likelihoods import detection_time_search
 
         pulse = self.pulse
@@ -154,21 +155,21 @@ class DetectionTimes(Likelihood):
 
         Exact tags tell as much at any depth; how much a coarse clock tells depends on its phase.
         """
-        return self._information(z) if self.pulse.interval > 0.0 else self._information_anywhere.copy()
-
-    @cached_property
-    def _information_anywhere(self) -> np.ndarray:
-        return self._information(np.zeros(self.shape))
-
-    def _information(self, z: np.ndarray) -> np.ndarray:
+        if self.pulse.interval == 0.0:
+            return self._information.copy()
         from recon.likelihoods import detection_time_kernels as kernels
 
-        coarse = self.pulse.interval > 0.0
-        quadrature = 2.0 * self.pulse.step  # a quarter of the finest detail
-        stride = self.pulse.interval * max(1.0, quadrature // self.pulse.interval) if coarse else quadrature
+        # A fine clock is taken a quarter of the pulse's finest detail at a time.
+        stride = self.pulse.interval * max(1.0, 2.0 * self.pulse.step // self.pulse.interval)
         out = np.zeros(self.shape)
-        kernels.information(np.asarray(z, np.float64), *self._tags, stride, coarse, *self._table, out)
+        kernels.coarse_information(np.asarray(z, np.float64), *self._tags, stride, *self._table, out)
         return out
+
+    @cached_property
+    def _information(self) -> np.ndarray:
+        """The Fisher information of every pixel's tags, if they are exact."""
+        tags = np.diff(self.start).reshape(self.shape)
+        return np.where(self._used, tags * self.pulse.information(self.noise), 0.0)
 
     def residuals(self, z: np.ndarray) -> np.ndarray:
         """See `Likelihood.residuals`."""
@@ -190,7 +191,7 @@ class DetectionTimes(Likelihood):
             y = self.y + self.pulse.interval * np.round((y - self.y) / self.pulse.interval)
         other = object.__new__(type(self))
         other.__dict__.update(self.__dict__)
-        for name in ("_best", "_information_anywhere"):
+        for name in ("_best", "_information"):
             other.__dict__.pop(name, None)
         other.y = kernels.ranges(y, self.start, self.shape[1], np.zeros((1, 1)), 1.0, period)
         return other
@@ -198,11 +199,11 @@ class DetectionTimes(Likelihood):
     def _pulse_draws(self, size: int, rng: np.random.Generator) -> np.ndarray:
         """Draw from the pulse, metres, before a clock's intervals."""
         smooth = self.pulse.resolution * rng.standard_normal(size)
-        if isinstance(self._shape_in_time, GaussianPulse):
+        if isinstance(self._law, GaussianPulse):
             return smooth
-        first, last = self._shape_in_time.support
+        first, last = self._law.support
         fine = np.linspace(first, last, 2 + math.ceil(4.0 * self._metres * (last - first) / self.pulse.step))
-        share = self._shape_in_time.cumulative(fine)
+        share = self._law.cumulative(fine)
         return smooth + self._metres * np.interp(rng.uniform(share[0], share[-1], size), share, fine)
 
     def majorise(self, z: np.ndarray) -> Gaussian:

@@ -62,10 +62,11 @@ def test_objective_and_certificate(name: str, prior: str) -> None:
     assert reference.converged
     assert ours.converged
     assert abs(ours.diagnostics.objective - best) <= 1e-4 * best
-    assert ours.diagnostics.dual_value <= best * (1.0 + 2e-6)
-    assert ours.diagnostics.objective >= best * (1.0 - 2e-6)
-    # The objective the conic solver reports is that of the same functions in numpy.
-    np.testing.assert_allclose(problem.objective(np.asarray(reference.image, float)), best, rtol=1e-4)
+    # The objective the conic solver reports is that of the same functions in numpy, and bounds the dual value.
+    reached = problem.objective(np.asarray(reference.image, float))
+    np.testing.assert_allclose(reached, best, rtol=2e-5)
+    assert ours.diagnostics.dual_value <= reached * (1.0 + 1e-6)
+    assert ours.diagnostics.objective >= reference.diagnostics.dual_value * (1.0 - 1e-5)
 
 
 @pytest.mark.parametrize("seed", [0, 1, 2])
