@@ -20,8 +20,13 @@ class ArrayBlock:
         self._marked: np.ndarray | None = None
 
     def step(
-        self, extrapolated: np.ndarray, sigma: float, tau: float, relaxation: float,
-        adjoint: np.ndarray, fresh: bool,
+        self,
+        extrapolated: np.ndarray,
+        sigma: float,
+        tau: float,
+        relaxation: float,
+        adjoint: np.ndarray,
+        fresh: bool,
     ) -> None:
         """See `Block.step`."""
         ahead = None

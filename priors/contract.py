@@ -40,8 +40,13 @@ class Block(Protocol):
     """An upper bound of the squared norm of K."""
 
     def step(
-        self, extrapolated: np.ndarray, sigma: float, tau: float, relaxation: float,
-        adjoint: np.ndarray, fresh: bool,
+        self,
+        extrapolated: np.ndarray,
+        sigma: float,
+        tau: float,
+        relaxation: float,
+        adjoint: np.ndarray,
+        fresh: bool,
     ) -> None:
         """Advance the duals by one over-relaxed step; write (fresh) or add K' y (image part) to `adjoint`.
 
@@ -130,7 +135,9 @@ class Prior(ABC):
     def feasible(self, y: np.ndarray, shape: tuple[int, int]) -> np.ndarray:
         """Return a point near y in the domain of g* with K_v' y = 0."""
         if self.auxiliary_shape(shape) is not None:
-            raise NotImplementedError(f"{type(self).__name__} has an auxiliary image and must write feasible()")
+            raise NotImplementedError(
+                f"{type(self).__name__} has an auxiliary image and must write feasible()"
+            )
         return self.dual_prox(y, 1e-6)
 
     def value(self, x: np.ndarray) -> float:

@@ -1,8 +1,8 @@
 """The orthonormal wavelet transform of an image of any size.
 
 PyWavelets' periodization is orthonormal only where every level halves an even length. Other images
-are first continued, by half-sample mirroring at the end of rows and columns, to a multiple of 2^levels; the map is
-then no longer orthonormal, and its adjoint is still exact.
+are first continued, by half-sample mirroring at the end of rows and columns, to a multiple of
+2^levels; the map is then no longer orthonormal, and its adjoint is still exact.
 """
 
 from __future__ import annotations
@@ -25,9 +25,7 @@ class Decimated:
         self.levels = most if levels is None else levels
         unit = 2**self.levels
         self.size = tuple(-(-n // unit) * unit for n in shape)
-        self._rows, self._columns = (
-            _continued(n, size) for n, size in zip(shape, self.size, strict=True)
-        )
+        self._rows, self._columns = (_continued(n, size) for n, size in zip(shape, self.size, strict=True))
         self.is_detail = np.ones(self.size, bool)
         self.is_detail[: self.size[0] // unit, : self.size[1] // unit] = False
 
@@ -46,7 +44,7 @@ class Decimated:
         return out
 
     def image(self, coefficients: np.ndarray) -> np.ndarray:
-        """Return the (continued) image of the coefficients: inverse and adjoint of an orthonormal transform."""
+        """Return the (continued) image of the coefficients: the inverse of `coefficients`, and its adjoint."""
         out = coefficients.copy()
         for rows, columns in reversed(self._halves()):
             low, right = out[:rows, :columns], out[:rows, columns : 2 * columns]

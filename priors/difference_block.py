@@ -24,21 +24,43 @@ class DifferenceBlock:
         self._marked: tuple[np.ndarray, np.ndarray] | None = None
 
     def step(
-        self, extrapolated: np.ndarray, sigma: float, tau: float, relaxation: float,
-        adjoint: np.ndarray, fresh: bool,
+        self,
+        extrapolated: np.ndarray,
+        sigma: float,
+        tau: float,
+        relaxation: float,
+        adjoint: np.ndarray,
+        fresh: bool,
     ) -> None:
         """See `Block.step`."""
         shrink = 1.0 / (1.0 + sigma / self._weight)
         kernels.step(
-            extrapolated, self.y_r, self.y_c, adjoint, *self._coefficients, np.float32(self._weight),
-            np.float32(shrink), self._penalty, np.float32(sigma), np.float32(relaxation), fresh, self._bands,
+            extrapolated,
+            self.y_r,
+            self.y_c,
+            adjoint,
+            *self._coefficients,
+            np.float32(self._weight),
+            np.float32(shrink),
+            self._penalty,
+            np.float32(sigma),
+            np.float32(relaxation),
+            fresh,
+            self._bands,
         )
 
     def certify(self, image: np.ndarray, adjoint: np.ndarray, fresh: bool) -> tuple[float, float]:
         """See `Block.certify`."""
         return kernels.certify(
-            image, self.y_r, self.y_c, adjoint, *self._coefficients, np.float32(self._weight),
-            self._penalty, fresh, self._bands,
+            image,
+            self.y_r,
+            self.y_c,
+            adjoint,
+            *self._coefficients,
+            np.float32(self._weight),
+            self._penalty,
+            fresh,
+            self._bands,
         )
 
     def mark(self) -> None:

@@ -62,8 +62,17 @@ def step(x, y_r, y_c, out, e_r, e_c, weight, shrink, penalty, sigma, relaxation,
         for i in range(start, stop):
             below = x[min(i + 1, rows - 1)]
             _dual_row(
-                x[i], below, y_r[i], y_c[i], row(e_r, i), row(e_c, i),
-                weight, shrink, penalty, sigma, relaxation,
+                x[i],
+                below,
+                y_r[i],
+                y_c[i],
+                row(e_r, i),
+                row(e_c, i),
+                weight,
+                shrink,
+                penalty,
+                sigma,
+                relaxation,
             )
             if i > start:
                 adjoint_row(
@@ -113,9 +122,7 @@ def certify(x, y_r, y_c, out, e_r, e_c, weight, penalty, fresh, bands):
         for i in range(start, stop):
             above, here, across = buffer[(i - start) % 2], buffer[(i - start + 1) % 2], buffer[2]
             _feasible_row(y_r, y_c, i, weight, penalty, here, across)
-            adjoint_row(
-                above, here, across, row(e_r, max(i - 1, 0)), row(e_r, i), row(e_c, i), out[i], fresh
-            )
+            adjoint_row(above, here, across, row(e_r, max(i - 1, 0)), row(e_r, i), row(e_c, i), out[i], fresh)
             values[i] = _penalty_row(x[i], x[min(i + 1, rows - 1)], row(e_r, i), row(e_c, i), penalty)
             if penalty == QUADRATIC:
                 total = 0.0

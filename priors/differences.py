@@ -20,8 +20,11 @@ class Differences:
     """Forward differences on images of one shape."""
 
     def __init__(
-        self, shape: tuple[int, int], spacing: tuple[float, float] = (1.0, 1.0),
-        mask: np.ndarray | None = None, edge_weights: np.ndarray | None = None,
+        self,
+        shape: tuple[int, int],
+        spacing: tuple[float, float] = (1.0, 1.0),
+        mask: np.ndarray | None = None,
+        edge_weights: np.ndarray | None = None,
     ) -> None:
         same_shape("mask", mask, shape)
         same_shape("edge_weights", edge_weights, shape)

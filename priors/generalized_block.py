@@ -38,8 +38,13 @@ class GeneralizedBlock:
         self._marked: tuple[np.ndarray, np.ndarray] | None = None
 
     def step(
-        self, extrapolated: np.ndarray, sigma: float, tau: float, relaxation: float,
-        adjoint: np.ndarray, fresh: bool,
+        self,
+        extrapolated: np.ndarray,
+        sigma: float,
+        tau: float,
+        relaxation: float,
+        adjoint: np.ndarray,
+        fresh: bool,
     ) -> None:
         """See `Block.step`."""
         kernels.pull(self.second, *self._exists, *self._inverse, self._ahead, self._bands)
@@ -47,8 +52,19 @@ class GeneralizedBlock:
             self.slopes, self._ahead, self.first, *self._weights, np.float32(tau), np.float32(relaxation)
         )
         kernels.dual_step(
-            extrapolated, self._ahead, self.first, self.second, adjoint, *self._weights, *self._exists,
-            *self._inverse, *self._limits, np.float32(sigma), np.float32(relaxation), fresh, self._bands,
+            extrapolated,
+            self._ahead,
+            self.first,
+            self.second,
+            adjoint,
+            *self._weights,
+            *self._exists,
+            *self._inverse,
+            *self._limits,
+            np.float32(sigma),
+            np.float32(relaxation),
+            fresh,
+            self._bands,
         )
 
     def certify(self, image: np.ndarray, adjoint: np.ndarray, fresh: bool) -> tuple[float, float]:
@@ -59,7 +75,9 @@ class GeneralizedBlock:
         """
         first, second = self._limits
         pull, dual = self._ahead, self.second.copy()
-        kernels.retreat(dual, np.zeros_like(pull), *self._exists, *self._inverse, second, self._rate, self._bands)
+        kernels.retreat(
+            dual, np.zeros_like(pull), *self._exists, *self._inverse, second, self._rate, self._bands
+        )
         for _ in range(RETREATS):
             kernels.pull(dual, *self._exists, *self._inverse, pull, self._bands)
             kernels.excess(pull, *self._weights, first)

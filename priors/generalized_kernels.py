@@ -28,8 +28,21 @@ def _across(exists, i, nothing):
 
 @numba.njit(**COMPILE)
 def _pull_row(
-    q_rr, q_cc, q_rc, q_rr_below, q_rc_below, m_r_above, m_r, m_r_below, m_c_above, m_c, m_c_below,
-    inverse_r, inverse_c, out_r, out_c,
+    q_rr,
+    q_cc,
+    q_rc,
+    q_rr_below,
+    q_rc_below,
+    m_r_above,
+    m_r,
+    m_r_below,
+    m_c_above,
+    m_c,
+    m_c_below,
+    inverse_r,
+    inverse_c,
+    out_r,
+    out_c,
 ):
     """Write a row of E' q: what the second-order duals ask of the slopes."""
     mixed_r, mixed_c = inverse_r * _HALF_ROOT, inverse_c * _HALF_ROOT
@@ -56,10 +69,21 @@ def pull(q, m_r, m_c, inverse_r, inverse_c, out, bands):
             below = min(i + 1, rows - 1)
             m_c_below = row(m_c, i + 1) if i + 1 < rows else nothing
             _pull_row(
-                q[0, i], q[1, i], q[2, i], q[0, below], q[2, below],
-                _edge(m_r, i - 1, rows, nothing), _edge(m_r, i, rows, nothing),
-                _edge(m_r, i + 1, rows, nothing), _across(m_c, i - 1, nothing), row(m_c, i), m_c_below,
-                inverse_r, inverse_c, out[0, i], out[1, i],
+                q[0, i],
+                q[1, i],
+                q[2, i],
+                q[0, below],
+                q[2, below],
+                _edge(m_r, i - 1, rows, nothing),
+                _edge(m_r, i, rows, nothing),
+                _edge(m_r, i + 1, rows, nothing),
+                _across(m_c, i - 1, nothing),
+                row(m_c, i),
+                m_c_below,
+                inverse_r,
+                inverse_c,
+                out[0, i],
+                out[1, i],
             )
 
 
@@ -92,7 +116,19 @@ def _first_row(x, below, v_r, v_c, w_r, w_c, inverse_r, inverse_c, out_r, out_c)
 
 @numba.njit(**COMPILE)
 def _second_row(
-    v_r, v_c, v_r_above, v_c_above, m_r, m_r_above, m_c, m_c_above, inverse_r, inverse_c, out_rr, out_cc, out_rc
+    v_r,
+    v_c,
+    v_r_above,
+    v_c_above,
+    m_r,
+    m_r_above,
+    m_c,
+    m_c_above,
+    inverse_r,
+    inverse_c,
+    out_rr,
+    out_cc,
+    out_rc,
 ):
     """Write a row of E v."""
     mixed_r, mixed_c = inverse_r * _HALF_ROOT, inverse_c * _HALF_ROOT
@@ -118,13 +154,31 @@ def dual_step(
             above = max(i - 1, 0)
             weights_r = nothing if i == rows - 1 else row(w_r, i)
             _first_row(
-                x[i], x[min(i + 1, rows - 1)], v[0, i], v[1, i], weights_r, row(w_c, i),
-                inverse_r, inverse_c, buffer[0], buffer[1],
+                x[i],
+                x[min(i + 1, rows - 1)],
+                v[0, i],
+                v[1, i],
+                weights_r,
+                row(w_c, i),
+                inverse_r,
+                inverse_c,
+                buffer[0],
+                buffer[1],
             )
             _second_row(
-                v[0, i], v[1, i], v[0, above], v[1, above], _edge(m_r, i, rows, nothing),
-                _edge(m_r, i - 1, rows, nothing), row(m_c, i), _across(m_c, i - 1, nothing),
-                inverse_r, inverse_c, buffer[2], buffer[3], buffer[4],
+                v[0, i],
+                v[1, i],
+                v[0, above],
+                v[1, above],
+                _edge(m_r, i, rows, nothing),
+                _edge(m_r, i - 1, rows, nothing),
+                row(m_c, i),
+                _across(m_c, i - 1, nothing),
+                inverse_r,
+                inverse_c,
+                buffer[2],
+                buffer[3],
+                buffer[4],
             )
             for j in range(columns):
                 a = p[0, i, j] + sigma * buffer[0, j]
@@ -174,13 +228,31 @@ def penalties(x, v, w_r, w_c, m_r, m_c, inverse_r, inverse_c, bands):
             above = max(i - 1, 0)
             weights_r = nothing if i == rows - 1 else row(w_r, i)
             _first_row(
-                x[i], x[min(i + 1, rows - 1)], v[0, i], v[1, i], weights_r, row(w_c, i),
-                inverse_r, inverse_c, buffer[0], buffer[1],
+                x[i],
+                x[min(i + 1, rows - 1)],
+                v[0, i],
+                v[1, i],
+                weights_r,
+                row(w_c, i),
+                inverse_r,
+                inverse_c,
+                buffer[0],
+                buffer[1],
             )
             _second_row(
-                v[0, i], v[1, i], v[0, above], v[1, above], _edge(m_r, i, rows, nothing),
-                _edge(m_r, i - 1, rows, nothing), row(m_c, i), _across(m_c, i - 1, nothing),
-                inverse_r, inverse_c, buffer[2], buffer[3], buffer[4],
+                v[0, i],
+                v[1, i],
+                v[0, above],
+                v[1, above],
+                _edge(m_r, i, rows, nothing),
+                _edge(m_r, i - 1, rows, nothing),
+                row(m_c, i),
+                _across(m_c, i - 1, nothing),
+                inverse_r,
+                inverse_c,
+                buffer[2],
+                buffer[3],
+                buffer[4],
             )
             total, bent = 0.0, 0.0
             for j in range(columns):
@@ -192,7 +264,7 @@ def penalties(x, v, w_r, w_c, m_r, m_c, inverse_r, inverse_c, bands):
 
 @numba.njit(parallel=True, **COMPILE)
 def excess(pull, w_r, w_c, first):
-    """Turn E' q into 1/o times what the first-order duals it asks for are beyond the disc of radius `first`."""
+    """Turn E' q into 1/o times what the first-order duals it asks for exceed the disc of radius `first` by."""
     rows, columns = pull.shape[1:]
     for i in prange(rows):
         a, b = row(w_r, i), row(w_c, i)
@@ -216,9 +288,19 @@ def retreat(q, beyond, m_r, m_c, inverse_r, inverse_c, second, rate, bands):
         for i in range(band * rows // bands, (band + 1) * rows // bands):
             above = max(i - 1, 0)
             _second_row(
-                beyond[0, i], beyond[1, i], beyond[0, above], beyond[1, above], _edge(m_r, i, rows, nothing),
-                _edge(m_r, i - 1, rows, nothing), row(m_c, i), _across(m_c, i - 1, nothing),
-                inverse_r, inverse_c, buffer[0], buffer[1], buffer[2],
+                beyond[0, i],
+                beyond[1, i],
+                beyond[0, above],
+                beyond[1, above],
+                _edge(m_r, i, rows, nothing),
+                _edge(m_r, i - 1, rows, nothing),
+                row(m_c, i),
+                _across(m_c, i - 1, nothing),
+                inverse_r,
+                inverse_c,
+                buffer[0],
+                buffer[1],
+                buffer[2],
             )
             for j in range(columns):
                 a = q[0, i, j] - rate * buffer[0, j]

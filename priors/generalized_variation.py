@@ -27,8 +27,8 @@ class GeneralizedVariation(Prior):
 
     D x are the forward differences over the pixel spacing (times the edge weight, as is v in that term);
     v is a field of slopes; E v is its symmetrised difference (v_rr, v_cc, (v_rc + v_cr) / sqrt(2)), over
-    the spacing; |.| is the Euclidean norm at a pixel and h the geometric mean of the two spacings. A plane costs nothing; an edge costs what it does
-    in total variation.
+    the spacing; |.| is the Euclidean norm at a pixel and h the geometric mean of the two spacings. A
+    plane costs nothing; an edge costs what it does in total variation.
 
     weight: positive number; larger means smoother. None leaves it to be chosen from the data by
         `recon.reconstruct`.
@@ -69,7 +69,7 @@ class GeneralizedVariation(Prior):
         return self.weight / h, self.weight * self.second_order / h
 
     def slopes(self, shape: tuple[int, int]) -> Slopes:
-        """Return the linear map K for images of `shape`: with lengths in units of h, steps suit x and v alike."""
+        """Return the linear map K for images of `shape`; lengths in units of h suit x and v alike."""
         h = (self.spacing[0] * self.spacing[1]) ** 0.5
         relative = self.spacing[0] / h, self.spacing[1] / h
         return Slopes(validation.image_shape(shape), relative, self.mask, self.edge_weights)
@@ -108,7 +108,9 @@ class GeneralizedVariation(Prior):
     def dual_prox(self, y: np.ndarray, sigma: float) -> np.ndarray:
         """Return y moved to the nearest point of the domain of g*."""
         first, second = self._sizes(y)
-        scales = [limit / np.maximum(size, limit) for limit, size in zip(self.limits, (first, second), strict=True)]
+        scales = [
+            limit / np.maximum(size, limit) for limit, size in zip(self.limits, (first, second), strict=True)
+        ]
         return np.concatenate([y[:2] * scales[0], y[2:] * scales[1]])
 
     def conjugate(self, y: np.ndarray) -> float:
@@ -118,7 +120,7 @@ class GeneralizedVariation(Prior):
         return 0.0 if inside else np.inf
 
     def feasible(self, y: np.ndarray, shape: tuple[int, int]) -> np.ndarray:
-        """Return the second-order duals of y, the first-order ones that K_v' y = 0 asks for, both scaled down."""
+        """Return y's second-order duals and the first-order ones that K_v' y = 0 asks for, scaled down."""
         projected = self.dual_prox(y, 1.0)
         projected[:2] = self.slopes(shape).balancing(projected[2:])
         largest = float(np.hypot(projected[0], projected[1]).max())

@@ -8,7 +8,7 @@ from typing import Any
 # Threads that wait by spinning slow a loaded machine down tenfold; read when the thread pool first starts.
 os.environ.setdefault("OMP_WAIT_POLICY", "PASSIVE")
 
-import numba  # noqa: E402
+import numba
 
 # Sums may be reordered and contracted for speed; infinities and NaN keep their meaning.
 COMPILE: dict[str, Any] = {

@@ -21,8 +21,11 @@ class Slopes:
     """K on images of one shape."""
 
     def __init__(
-        self, shape: tuple[int, int], spacing: tuple[float, float] = (1.0, 1.0),
-        mask: np.ndarray | None = None, edge_weights: np.ndarray | None = None,
+        self,
+        shape: tuple[int, int],
+        spacing: tuple[float, float] = (1.0, 1.0),
+        mask: np.ndarray | None = None,
+        edge_weights: np.ndarray | None = None,
     ) -> None:
         self.shape = shape
         self.inverse_spacing = (1.0 / spacing[0], 1.0 / spacing[1])
@@ -46,7 +49,7 @@ class Slopes:
         return float(np.linalg.norm(bounds, 2) ** 2)
 
     def _pairs(self) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray]:
-        """Return where two neighbouring slopes both exist, over the spacing, for the four second differences."""
+        """Return, for the four second differences, where both slopes exist, over the spacing."""
         m_r, m_c = self.exists
         i_r, i_c = self.inverse_spacing
         r_down, c_right, c_down, r_right = (np.zeros(self.shape, np.float64) for _ in range(4))
@@ -115,7 +118,7 @@ class Slopes:
         n = rows * columns
 
         def along(axis: int, diagonal: int) -> Any:
-            """Differences to the next pixel (1) or from the last one (-1); where there is none, coefficients are 0."""
+            """Differences to the next pixel (1) or from the last (-1); coefficients are 0 where there is none."""
             length = self.shape[axis]
             single = sparse.diags([-1.0 * diagonal, 1.0 * diagonal], [0, diagonal], shape=(length, length))
             if axis == 0:

@@ -1,9 +1,9 @@
 """The undecimated wavelet transform (a trous; Holschneider et al. 1989) of an image of any size.
 
 The image is continued beyond its border by half-sample mirroring, as far as the filters reach, so
-nothing wraps round. Level j = 1, 2, ... filters the low-pass image of the level before with the wavelet's
-two filters, 2^(j-1) samples apart and over sqrt(2), along rows and along columns. At every pixel and level that
-gives three details: (low, high), (high, low) and (high, high). Filters so scaled make a tight frame
+nothing wraps round. Level j = 1, 2, ... filters the low-pass image of the level before with the
+wavelet's two filters, 2^(j-1) samples apart and over sqrt(2), along rows and along columns. At every
+pixel and level that gives three details: (low, high), (high, low) and (high, high). Filters so scaled make a tight frame
 of the plane (the squares of all details and of the last low-pass image add up to those of the image);
 at the border mirrored pixels count again.
 """
@@ -28,7 +28,8 @@ def orthogonal(name: str) -> pywt.Wavelet:
         wavelet = None
     if wavelet is None or not wavelet.orthogonal:
         raise PriorError(
-            f"wavelet is {name!r}; give an orthogonal one, such as haar, db2 to db38, sym2 to sym20 or coif1 to coif17."
+            f"wavelet is {name!r}; give an orthogonal one, such as haar, db2 to db38,"
+            " sym2 to sym20 or coif1 to coif17."
         )
     return wavelet
 

@@ -29,8 +29,17 @@ class UndecimatedBlock:
         for level, offset in enumerate(self._transform.offsets):
             weight = self._weights[level]
             total += float(weight) * kernels.analyse(
-                self._images[level], self._images[level + 1], self.dual[level], offset, *self._filters,
-                2**level, np.float32(sigma), np.float32(relaxation), weight, advance, self._bands,
+                self._images[level],
+                self._images[level + 1],
+                self.dual[level],
+                offset,
+                *self._filters,
+                2**level,
+                np.float32(sigma),
+                np.float32(relaxation),
+                weight,
+                advance,
+                self._bands,
             )
         return total
 
@@ -38,8 +47,14 @@ class UndecimatedBlock:
         levels = self._transform.levels
         for level in range(levels - 1, -1, -1):
             kernels.synthesise(
-                self._images[level + 1], self.dual[level], self._images[level],
-                self._transform.offsets[level], *self._filters, 2**level, limits[level], level == levels - 1,
+                self._images[level + 1],
+                self.dual[level],
+                self._images[level],
+                self._transform.offsets[level],
+                *self._filters,
+                2**level,
+                limits[level],
+                level == levels - 1,
                 self._bands,
             )
         folded = self._transform.fold(self._images[0])
@@ -49,8 +64,13 @@ class UndecimatedBlock:
             adjoint += folded
 
     def step(
-        self, extrapolated: np.ndarray, sigma: float, tau: float, relaxation: float,
-        adjoint: np.ndarray, fresh: bool,
+        self,
+        extrapolated: np.ndarray,
+        sigma: float,
+        tau: float,
+        relaxation: float,
+        adjoint: np.ndarray,
+        fresh: bool,
     ) -> None:
         """See `Block.step`."""
         self._analyse(extrapolated, sigma, relaxation, True)

@@ -1,6 +1,7 @@
 """Compiled passes of the undecimated wavelet transform; see `priors.undecimated` for the map.
 
-Filters have an even number of taps, taken two at a time: the loops over columns are then few, long and vectorised.
+Filters have an even number of taps, taken two at a time: the loops over columns are then few, long and
+vectorised.
 """
 
 from __future__ import annotations

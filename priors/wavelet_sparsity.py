@@ -1,4 +1,7 @@
-"""Sparsity of wavelet details: orthonormal (Donoho and Johnstone 1994) or translation-invariant (Coifman and Donoho 1995)."""
+"""Sparsity of wavelet details: orthonormal, or translation-invariant.
+
+Donoho and Johnstone 1994; Coifman and Donoho 1995 (averaging over shifts).
+"""
 
 from __future__ import annotations
 
@@ -24,7 +27,7 @@ CONIC_PIXELS = 64 * 64
 class WaveletSparsity(Prior):
     """weight times the sum of the absolute wavelet details of the image.
 
-        translation-invariant:  weight * sum over levels j = 1, 2, ... of 2^(-2.5 (j-1)) * sum |details of level j|
+        translation-invariant:  weight * sum over levels j = 1, 2, ... of 2^(-2.5 (j-1)) sum |details|
         orthonormal:            weight * sum |details|
 
     The coarsest low-pass image is free. The translation-invariant details (three at every pixel and level)

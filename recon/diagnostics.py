@@ -18,7 +18,7 @@ class Status(Enum):
     )
     PRECISION_LIMIT = (
         "the gap stopped falling where single precision ends; the image is as good as it gets",
-        "ask for a tolerance of 1e-6 or more, or give solver=\"conic\" for a small image",
+        'ask for a tolerance of 1e-6 or more, or give solver="conic" for a small image',
     )
     NOT_FINITE = (
         "a value stopped being finite; the image is the last finite iterate",

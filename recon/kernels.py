@@ -8,9 +8,9 @@ from typing import Any
 # Threads that wait by spinning slow a loaded machine down tenfold; read when the thread pool first starts.
 os.environ.setdefault("OMP_WAIT_POLICY", "PASSIVE")
 
-import numba  # noqa: E402
-import numpy as np  # noqa: E402
-from numba import prange  # noqa: E402
+import numba
+import numpy as np
+from numba import prange
 
 # Sums may be reordered and contracted for speed; infinities and NaN keep their meaning.
 COMPILE: dict[str, Any] = {

@@ -34,7 +34,9 @@ class Problem:
     bounds: tuple[float, float]
 
     def __init__(
-        self, likelihood: Likelihood, priors: Prior | Sum | Iterable[Prior | Sum] = (),
+        self,
+        likelihood: Likelihood,
+        priors: Prior | Sum | Iterable[Prior | Sum] = (),
         bounds: tuple[float, float] | None = None,
     ) -> None:
         if not isinstance(likelihood, Likelihood):
@@ -67,12 +69,15 @@ def _flatten(priors: Prior | Sum | Iterable[Prior | Sum]) -> tuple[Prior, ...]:
     parts = [priors] if isinstance(priors, Prior | Sum) else list(priors)
     for part in parts:
         if not isinstance(part, Prior | Sum):
-            raise InputError(f"priors holds a {type(part).__name__}; give priors such as priors.TotalVariation(1.0).")
+            raise InputError(
+                f"priors holds a {type(part).__name__}; give priors such as priors.TotalVariation(1.0)."
+            )
     terms = tuple(term for part in parts for term in part.terms())
     for term in terms:
         if term.weight is None:
             raise InputError(
-                f"the weight of {type(term).__name__} is not set; give it, or let recon.reconstruct choose it."
+                f"the weight of {type(term).__name__} is not set; give it, or let recon.reconstruct"
+                " choose it."
             )
     return terms
 

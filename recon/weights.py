@@ -6,8 +6,8 @@ import math
 
 import numpy as np
 
-from recon.problem import Prior, Sum
 from recon.likelihoods.contract import Likelihood
+from recon.problem import Prior, Sum
 
 
 def typical_information(likelihood: Likelihood) -> float:

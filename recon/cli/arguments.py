@@ -64,9 +64,7 @@ class Parser(argparse.ArgumentParser):
     """A parser whose complaints are errors like any other bad input."""
 
     def __init__(self, **settings: object) -> None:
-        super().__init__(
-            allow_abbrev=False, formatter_class=argparse.RawDescriptionHelpFormatter, **settings
-        )
+        super().__init__(allow_abbrev=False, formatter_class=argparse.RawDescriptionHelpFormatter, **settings)
 
     def error(self, message: str) -> NoReturn:
         raise InputError(f"{message}; see {self.prog} --help.")
@@ -98,11 +96,15 @@ def _common(default: object) -> argparse.ArgumentParser:
     """Return the options that may stand before or after the command."""
     common = argparse.ArgumentParser(add_help=False)
     common.add_argument(
-        "--quiet", action="store_true", default=default,
+        "--quiet",
+        action="store_true",
+        default=default,
         help="no progress and no table; errors still go to standard error",
     )
     common.add_argument(
-        "--json", action="store_true", default=default,
+        "--json",
+        action="store_true",
+        default=default,
         help="the summary as JSON, and nothing else, on standard output",
     )
     return common
@@ -110,7 +112,10 @@ def _common(default: object) -> argparse.ArgumentParser:
 
 def _demo(commands: argparse._SubParsersAction, common: argparse.ArgumentParser) -> None:
     command = commands.add_parser(
-        "demo", parents=[common], description=DEMO, epilog=EXIT_CODES,
+        "demo",
+        parents=[common],
+        description=DEMO,
+        epilog=EXIT_CODES,
         help="both bundled acquisitions, start to finish, to a folder",
     )
     command.add_argument(
@@ -121,29 +126,42 @@ def _demo(commands: argparse._SubParsersAction, common: argparse.ArgumentParser)
 
 def _reconstruct(commands: argparse._SubParsersAction, common: argparse.ArgumentParser) -> None:
     command = commands.add_parser(
-        "reconstruct", parents=[common], description=RECONSTRUCT, epilog=RECONSTRUCT_EXAMPLES + EXIT_CODES,
+        "reconstruct",
+        parents=[common],
+        description=RECONSTRUCT,
+        epilog=RECONSTRUCT_EXAMPLES + EXIT_CODES,
         help="an acquisition file to images, uncertainty and diagnostics",
     )
     command.add_argument("file", metavar="FILE", help="acquisition file (HDF5)")
     command.add_argument(
-        "--prior", metavar="NAME",
+        "--prior",
+        metavar="NAME",
         help="prior of the image (of the depth image, for time tags): total-variation, generalized-variation,"
         " wavelet-sparsity or smoothness",
     )
     command.add_argument(
-        "--weight", metavar="W", type=_real,
+        "--weight",
+        metavar="W",
+        type=_real,
         help="weight of that prior, above 0; larger is smoother (default: a rule of thumb from the data)",
     )
     command.add_argument(
-        "--tolerance", metavar="T", type=_real, default=1e-4,
+        "--tolerance",
+        metavar="T",
+        type=_real,
+        default=1e-4,
         help="relative gap between objective and dual value to stop at, in (0, 1) (default: %(default)g)",
     )
     command.add_argument(
-        "--max-iterations", metavar="N", type=_whole, default=30_000,
+        "--max-iterations",
+        metavar="N",
+        type=_whole,
+        default=30_000,
         help="iterations after which to stop in any case (default: %(default)d)",
     )
     command.add_argument(
-        "--out", metavar="DIR",
+        "--out",
+        metavar="DIR",
         help="folder to write to (default: fewcount-out/ and FILE's name)",
     )
     command.set_defaults(module="recon.cli.reconstruct")
@@ -151,7 +169,9 @@ def _reconstruct(commands: argparse._SubParsersAction, common: argparse.Argument
 
 def _simulate(commands: argparse._SubParsersAction, common: argparse.ArgumentParser) -> None:
     command = commands.add_parser(
-        "simulate", description=SIMULATE, epilog=SIMULATE_EXAMPLES + EXIT_CODES,
+        "simulate",
+        description=SIMULATE,
+        epilog=SIMULATE_EXAMPLES + EXIT_CODES,
         help="an acquisition from known images",
     )
     kinds = command.add_subparsers(title="kinds of acquisition", dest="kind", metavar="KIND", required=True)
@@ -177,12 +197,12 @@ def _simulate_counts(command: argparse.ArgumentParser) -> None:
     command.add_argument("--trials", metavar="N", type=_real, help="trials of every pixel")
     _add_rates(command)
     command.add_argument(
-        "--stop-after", metavar="L", type=_whole,
+        "--stop-after",
+        metavar="L",
+        type=_whole,
         help="a pixel stops at its L-th detection; --trials is then the most it makes, no limit if left out",
     )
-    command.add_argument(
-        "--several-per-trial", action="store_true", help="a trial may detect more than once"
-    )
+    command.add_argument("--several-per-trial", action="store_true", help="a trial may detect more than once")
 
 
 def _simulate_tags(command: argparse.ArgumentParser) -> None:
@@ -195,11 +215,17 @@ def _simulate_tags(command: argparse.ArgumentParser) -> None:
     )
     _add_rates(command)
     command.add_argument(
-        "--time-zero", metavar="S", type=_real, default=0.0,
+        "--time-zero",
+        metavar="S",
+        type=_real,
+        default=0.0,
         help="time in s at which a return from range 0 arrives (default: %(default)g)",
     )
     command.add_argument(
-        "--refractive-index", metavar="N", type=_real, default=1.0,
+        "--refractive-index",
+        metavar="N",
+        type=_real,
+        default=1.0,
         help="of the medium in front of the instrument (default: %(default)g)",
     )
     command.add_argument(
@@ -217,11 +243,17 @@ def _simulate_frames(command: argparse.ArgumentParser) -> None:
 
 def _add_rates(command: argparse.ArgumentParser) -> None:
     command.add_argument(
-        "--gain", metavar="G", type=_real, default=1.0,
+        "--gain",
+        metavar="G",
+        type=_real,
+        default=1.0,
         help="signal detections per trial at reflectivity 1 (default: %(default)g)",
     )
     command.add_argument(
-        "--background", metavar="B", type=_real, default=0.0,
+        "--background",
+        metavar="B",
+        type=_real,
+        default=0.0,
         help="other detections per trial (default: %(default)g)",
     )
 

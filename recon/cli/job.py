@@ -65,8 +65,11 @@ class Job:
         with SolveProgress(self.settings.tolerance, hidden=quiet) as progress:
             progress.step(f"{source.name}: starting")
             result = reconstruct(
-                source.acquisition, self.settings.prior, tolerance=self.settings.tolerance,
-                max_iterations=self.settings.max_iterations, callback=progress,
+                source.acquisition,
+                self.settings.prior,
+                tolerance=self.settings.tolerance,
+                max_iterations=self.settings.max_iterations,
+                callback=progress,
             )
             progress.step("writing")
             records = self._write(source, result)

@@ -39,8 +39,13 @@ Drawn = tuple[Acquisition, Mapping[str, np.ndarray]]
 def _counts(options: Namespace) -> Drawn:
     image = load_known_image(options.image, "reflectivity")
     drawn = simulate.counts(
-        image, options.trials, options.gain, options.background, stop_after=options.stop_after,
-        several_per_trial=options.several_per_trial, seed=options.seed,
+        image,
+        options.trials,
+        options.gain,
+        options.background,
+        stop_after=options.stop_after,
+        several_per_trial=options.several_per_trial,
+        seed=options.seed,
     )
     return drawn, {"reflectivity": image}
 
@@ -49,9 +54,17 @@ def _tags(options: Namespace) -> Drawn:
     depth = load_known_image(options.depth, "depth")
     reflectivity = load_known_image(options.reflectivity, "reflectivity")
     drawn = simulate.time_tags(
-        depth, reflectivity, options.trials, options.period, GaussianPulse(options.pulse_rms), options.gain,
-        options.background, time_zero=options.time_zero, refractive_index=options.refractive_index,
-        interval=options.interval, seed=options.seed,
+        depth,
+        reflectivity,
+        options.trials,
+        options.period,
+        GaussianPulse(options.pulse_rms),
+        options.gain,
+        options.background,
+        time_zero=options.time_zero,
+        refractive_index=options.refractive_index,
+        interval=options.interval,
+        seed=options.seed,
     )
     return drawn, {"depth": depth, "reflectivity": reflectivity}
 

@@ -22,7 +22,9 @@ recon.reconstruct(recon.simulate.frames(np.full((16, 16), 2.0), 0.125, 30, seed=
 def compiling_for_frames() -> Iterator[None]:
     """Compile what frames need in a process of its own, which ends with the block at the latest."""
     process = subprocess.Popen(
-        [sys.executable, "-c", _FRAMES], stdin=subprocess.DEVNULL, stdout=subprocess.DEVNULL,
+        [sys.executable, "-c", _FRAMES],
+        stdin=subprocess.DEVNULL,
+        stdout=subprocess.DEVNULL,
         stderr=subprocess.DEVNULL,
     )
     try:

@@ -9,7 +9,9 @@ from recon.likelihoods.poisson_marks import PoissonMarks
 from recon.problem import Prior, Sum
 
 
-def electron_yield(frames: Frames, prior: Prior | Sum | None = None, effort: Effort | None = None) -> PhysicalImage:
+def electron_yield(
+    frames: Frames, prior: Prior | Sum | None = None, effort: Effort | None = None
+) -> PhysicalImage:
     """Return the yield image: mean detected electrons per primary particle.
 
     Uses how the electrons fall on the frames, not their total alone: a frame with several electrons

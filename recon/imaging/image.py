@@ -7,8 +7,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from recon.problem import Prior
 from recon.diagnostics import Diagnostics, Status
+from recon.problem import Prior
 
 
 @dataclass(frozen=True, eq=False)

@@ -13,8 +13,12 @@ from recon.solvers import State
 
 
 def reconstruct(
-    acquisition: Counts | TimeTags | Frames, prior: Prior | Sum | None = None, *,
-    reflectivity_prior: Prior | Sum | None = None, tolerance: float = 1e-4, max_iterations: int = 30_000,
+    acquisition: Counts | TimeTags | Frames,
+    prior: Prior | Sum | None = None,
+    *,
+    reflectivity_prior: Prior | Sum | None = None,
+    tolerance: float = 1e-4,
+    max_iterations: int = 30_000,
     callback: Callable[[str, State], object] | None = None,
 ) -> Reconstruction:
     """Return the images that the acquisition allows, each with its uncertainty and its certificate.
@@ -33,7 +37,8 @@ def reconstruct(
     for name, given in (("prior", prior), ("reflectivity_prior", reflectivity_prior)):
         if not (given is None or isinstance(given, Prior | Sum)):
             raise InputError(
-                f"{name} is a {type(given).__name__}; give a prior such as priors.TotalVariation(), or leave it out."
+                f"{name} is a {type(given).__name__}; give a prior such as priors.TotalVariation(),"
+                " or leave it out."
             )
     if reflectivity_prior is not None and not isinstance(acquisition, TimeTags):
         raise InputError("reflectivity_prior is for TimeTags; for other acquisitions give prior.")

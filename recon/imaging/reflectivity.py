@@ -19,6 +19,8 @@ def counting_likelihood(counts: Counts) -> Likelihood:
     return Poisson(counts) if counts.several_per_trial else BernoulliTrials(counts)
 
 
-def reflectivity(counts: Counts, prior: Prior | Sum | None = None, effort: Effort | None = None) -> PhysicalImage:
+def reflectivity(
+    counts: Counts, prior: Prior | Sum | None = None, effort: Effort | None = None
+) -> PhysicalImage:
     """Return the reflectivity image (a ratio): detections per trial less background, over the gain."""
     return image_of("reflectivity", counting_likelihood(counts), prior, "1", effort or Effort())

@@ -26,7 +26,11 @@ class Effort:
 
 
 def image_of(
-    name: str, likelihood: Likelihood, prior: Prior | Sum | None, unit: str, effort: Effort,
+    name: str,
+    likelihood: Likelihood,
+    prior: Prior | Sum | None,
+    unit: str,
+    effort: Effort,
     start: np.ndarray | None = None,
 ) -> PhysicalImage:
     """Return the image that minimises likelihood + prior within the likelihood's default bounds."""
@@ -34,8 +38,11 @@ def image_of(
     problem = Problem(likelihood, terms)
     told = effort.callback
     solution = solve(
-        problem, solver="conic" if any(term.conic_only for term in terms) else None,
-        tolerance=effort.tolerance, max_iterations=effort.max_iterations, start=start,
+        problem,
+        solver="conic" if any(term.conic_only for term in terms) else None,
+        tolerance=effort.tolerance,
+        max_iterations=effort.max_iterations,
+        start=start,
         callback=None if told is None else lambda state: told(name, state),
     )
     return PhysicalImage(

@@ -45,9 +45,7 @@ def _detecting(mu):
 
 
 @numba.njit(parallel=True, **COMPILE)
-def proximal_step(
-    x, adjoint, extrapolated, count, idle, gain, background, step, relaxation, low, high
-):
+def proximal_step(x, adjoint, extrapolated, count, idle, gain, background, step, relaxation, low, high):
     """See `Likelihood.proximal_step`: two Newton steps from the current image."""
     for i in prange(x.shape[0]):
         g, b = row(gain, i), row(background, i)

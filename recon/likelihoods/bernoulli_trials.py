@@ -35,7 +35,7 @@ class BernoulliTrials(Likelihood):
     counts: the acquisition; trials are the trials that were made. Pixels masked or without trials
         contribute zero.
     stop_after: None for a fixed number of trials, or L, the number of detections after which a pixel stopped.
-    most_trials: with stop_after, the number of trials after which a pixel stopped in any case; None = no limit.
+    most_trials: with stop_after, the number of trials after which a pixel stopped in any case; None = none.
 
     Raises InputError if detections exceed trials, or do not agree with the stopping rule.
     """
@@ -54,11 +54,15 @@ class BernoulliTrials(Likelihood):
     def _check(self, counts: Counts) -> None:
         if counts.several_per_trial:
             self._refuse(
-                self._k > self._n, "detections", self._k,
+                self._k > self._n,
+                "detections",
+                self._k,
                 "BernoulliTrials allows one detection a trial; use likelihoods.Poisson",
             )
             self._refuse(
-                self._n % 1.0 != 0.0, "trials", self._n,
+                self._n % 1.0 != 0.0,
+                "trials",
+                self._n,
                 "BernoulliTrials counts whole trials; use likelihoods.Poisson for an exposure",
             )
         if self._stop_after is None:
@@ -70,10 +74,14 @@ class BernoulliTrials(Likelihood):
                 raise InputError(f"{name} is {limit!r}; give a whole number of at least 1.")
         reached = self._k == self._stop_after
         if self._most_trials is not None:
-            self._refuse(self._n > self._most_trials, "trials", self._n, f"most_trials is {self._most_trials}")
+            self._refuse(
+                self._n > self._most_trials, "trials", self._n, f"most_trials is {self._most_trials}"
+            )
             reached |= (self._n == self._most_trials) & (self._k < self._stop_after)
         self._refuse(
-            self._has_data & ~reached, "detections", self._k,
+            self._has_data & ~reached,
+            "detections",
+            self._k,
             f"waiting for detection {self._stop_after} ends with it (or at most_trials); mask the pixel,"
             " or leave stop_after out",
         )
@@ -248,15 +256,30 @@ class BernoulliTrials(Likelihood):
         )
 
     def proximal_step(
-        self, x: np.ndarray, adjoint: np.ndarray, extrapolated: np.ndarray, step: float, relaxation: float,
-        low: float, high: float,
+        self,
+        x: np.ndarray,
+        adjoint: np.ndarray,
+        extrapolated: np.ndarray,
+        step: float,
+        relaxation: float,
+        low: float,
+        high: float,
     ) -> None:
         """See `Likelihood.proximal_step`."""
         from recon.likelihoods import bernoulli_kernels as kernels
 
         kernels.proximal_step(
-            x, adjoint, extrapolated, self._count, self._idle, self._gain, self._background,
-            np.float32(step), np.float32(relaxation), np.float32(low), np.float32(high),
+            x,
+            adjoint,
+            extrapolated,
+            self._count,
+            self._idle,
+            self._gain,
+            self._background,
+            np.float32(step),
+            np.float32(relaxation),
+            np.float32(low),
+            np.float32(high),
         )
 
     def expression(self, x: cp.Expression) -> tuple[cp.Expression, list[Any]]:

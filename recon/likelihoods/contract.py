@@ -117,8 +117,14 @@ class Likelihood(ABC):
         return float(np.sum(self.conjugate_map(u, low, high), dtype=np.float64))
 
     def proximal_step(
-        self, x: np.ndarray, adjoint: np.ndarray, extrapolated: np.ndarray, step: float, relaxation: float,
-        low: float, high: float,
+        self,
+        x: np.ndarray,
+        adjoint: np.ndarray,
+        extrapolated: np.ndarray,
+        step: float,
+        relaxation: float,
+        low: float,
+        high: float,
     ) -> None:
         """Advance x by one over-relaxed step of a primal-dual solve, in place (float32 images).
 

@@ -31,8 +31,12 @@ class Gaussian(Likelihood):
     """
 
     def __init__(
-        self, readings: np.ndarray, variance: float | np.ndarray = 1.0, gain: float | np.ndarray = 1.0,
-        offset: float | np.ndarray = 0.0, mask: np.ndarray | None = None,
+        self,
+        readings: np.ndarray,
+        variance: float | np.ndarray = 1.0,
+        gain: float | np.ndarray = 1.0,
+        offset: float | np.ndarray = 0.0,
+        mask: np.ndarray | None = None,
     ) -> None:
         image = real_array(readings, "readings")
         if image.ndim != 2:
@@ -42,7 +46,9 @@ class Gaussian(Likelihood):
         bad = has_data & ~np.isfinite(image)
         if bad.any():
             place = tuple(int(i) for i in np.argwhere(bad)[0])
-            raise InputError(f"readings at {place} is {image[place]}; give a finite reading, or mask the pixel.")
+            raise InputError(
+                f"readings at {place} is {image[place]}; give a finite reading, or mask the pixel."
+            )
         variance = number_or_map(variance, "variance", image.shape, POSITIVE)
         gain = number_or_map(gain, "gain", image.shape, POSITIVE)
         offset = number_or_map(offset, "offset", image.shape, FINITE)
@@ -162,15 +168,28 @@ class Gaussian(Likelihood):
         )
 
     def proximal_step(
-        self, x: np.ndarray, adjoint: np.ndarray, extrapolated: np.ndarray, step: float, relaxation: float,
-        low: float, high: float,
+        self,
+        x: np.ndarray,
+        adjoint: np.ndarray,
+        extrapolated: np.ndarray,
+        step: float,
+        relaxation: float,
+        low: float,
+        high: float,
     ) -> None:
         """See `Likelihood.proximal_step`."""
         from recon.likelihoods import gaussian_kernels
 
         gaussian_kernels.proximal_step(
-            x, adjoint, extrapolated, self._target, self._precision,
-            np.float32(step), np.float32(relaxation), np.float32(low), np.float32(high),
+            x,
+            adjoint,
+            extrapolated,
+            self._target,
+            self._precision,
+            np.float32(step),
+            np.float32(relaxation),
+            np.float32(low),
+            np.float32(high),
         )
 
     def expression(self, x: cp.Expression) -> tuple[cp.Expression, list[Any]]:

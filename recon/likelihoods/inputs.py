@@ -11,7 +11,9 @@ def drawing_image(x: np.ndarray, shape: tuple[int, int]) -> np.ndarray:
     """Return x as float64, or raise InputError unless it is a finite image of `shape`."""
     image = np.asarray(x, np.float64)
     if image.shape != tuple(shape):
-        raise InputError(f"the image has shape {image.shape} but the data has {tuple(shape)}; make them equal.")
+        raise InputError(
+            f"the image has shape {image.shape} but the data has {tuple(shape)}; make them equal."
+        )
     bad = ~np.isfinite(image)
     if bad.any():
         place = tuple(int(i) for i in np.argwhere(bad)[0])

@@ -30,11 +30,16 @@ class Poisson(Likelihood):
         has_data = np.broadcast_to(np.asarray(exposure) > 0.0, counts.shape)
         count = counts.detections.astype(np.float32)
         count[~has_data] = 0.0
-        self._set(count, np.multiply(exposure, counts.gain), np.divide(counts.background, counts.gain), has_data)
+        self._set(
+            count, np.multiply(exposure, counts.gain), np.divide(counts.background, counts.gain), has_data
+        )
 
     @classmethod
     def from_arrays(
-        cls, count: np.ndarray, slope: float | np.ndarray, offset: float | np.ndarray = 0.0,
+        cls,
+        count: np.ndarray,
+        slope: float | np.ndarray,
+        offset: float | np.ndarray = 0.0,
         has_data: np.ndarray | None = None,
     ) -> Poisson:
         """Return the likelihood with m = slope (x + offset), from arrays that are known to be good.
@@ -151,15 +156,29 @@ class Poisson(Likelihood):
         )
 
     def proximal_step(
-        self, x: np.ndarray, adjoint: np.ndarray, extrapolated: np.ndarray, step: float, relaxation: float,
-        low: float, high: float,
+        self,
+        x: np.ndarray,
+        adjoint: np.ndarray,
+        extrapolated: np.ndarray,
+        step: float,
+        relaxation: float,
+        low: float,
+        high: float,
     ) -> None:
         """See `Likelihood.proximal_step`."""
         from recon.likelihoods import poisson_kernels
 
         poisson_kernels.proximal_step(
-            x, adjoint, extrapolated, self._count, self._slope, self._offset,
-            np.float32(step), np.float32(relaxation), np.float32(low), np.float32(high),
+            x,
+            adjoint,
+            extrapolated,
+            self._count,
+            self._slope,
+            self._offset,
+            np.float32(step),
+            np.float32(relaxation),
+            np.float32(low),
+            np.float32(high),
         )
 
     def expression(self, x: cp.Expression) -> tuple[cp.Expression, list[Any]]:

@@ -28,7 +28,7 @@ def proximal_step(x, adjoint, extrapolated, count, slope, offset, step, relaxati
 
 @numba.njit(inline="always", **COMPILE)
 def _half_deviance(mean, count):
-    """Half the deviance of a count from its mean; np.log of a float32 ratio near one loses nothing that shows."""
+    """Half the deviance of a count from its mean."""
     if count > 0.0:
         return mean - count + count * np.log(count / mean)
     return mean

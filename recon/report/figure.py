@@ -77,7 +77,9 @@ def save_picture(path: str | os.PathLike, picture: Picture) -> None:
     with matplotlib.rc_context(STYLE), replacing(path) as temporary, warnings.catch_warnings():
         warnings.filterwarnings("ignore", "Glyph", UserWarning)  # a name may hold letters the font has not
         draw(picture).savefig(
-            temporary, format="png", dpi=DPI,
+            temporary,
+            format="png",
+            dpi=DPI,
             metadata={"Title": f"{words.spelled(picture.name)}, {picture.source}", "Software": "fewcount"},
         )
 

@@ -69,8 +69,12 @@ def draw_panel(axes: Axes, panel: Panel, main: bool = False) -> None:
     block = max(1, math.ceil(max(rows, columns) / MOST_ACROSS[main]))
     values = reduced(panel.values, block)
     shown = axes.imshow(
-        np.ma.masked_invalid(values), cmap=colours, vmin=low, vmax=high,
-        aspect="equal" if square else "auto", interpolation_stage="data",
+        np.ma.masked_invalid(values),
+        cmap=colours,
+        vmin=low,
+        vmax=high,
+        aspect="equal" if square else "auto",
+        interpolation_stage="data",
         # between pixels, one without a value would take its neighbours with it
         interpolation="auto" if np.isfinite(values).all() else "nearest",
         extent=(-0.5, block * values.shape[1] - 0.5, block * values.shape[0] - 0.5, -0.5),
@@ -82,8 +86,10 @@ def draw_panel(axes: Axes, panel: Panel, main: bool = False) -> None:
     below, above = bool(np.any(finite < low)), bool(np.any(finite > high))
     width = _width(axes, rows / columns if square else None)
     bar = axes.figure.colorbar(
-        shown, cax=axes.inset_axes((1 + 0.06 / width, 0.0, (0.17 if main else 0.12) / width, 1.0)),
-        extend=EXTEND[below, above], extendfrac=0.03,
+        shown,
+        cax=axes.inset_axes((1 + 0.06 / width, 0.0, (0.17 if main else 0.12) / width, 1.0)),
+        extend=EXTEND[below, above],
+        extendfrac=0.03,
     )
     bar.set_label(panel.label, fontsize=10 if main else 8)
     bar.ax.tick_params(labelsize=9 if main else 7)
@@ -110,8 +116,14 @@ def draw_course(axes: Axes, trace: Trace, tolerance: float) -> None:
     axes.semilogy(trace.iteration[good], trace.relative_gap[good], **style)
     axes.axhline(tolerance, color="#777777", linewidth=0.9, linestyle="--")
     axes.annotate(
-        f"tolerance {tolerance:g}", (0.03, tolerance), xycoords=("axes fraction", "data"), fontsize=7,
-        color="#555555", va="top", xytext=(0, -2), textcoords="offset points",
+        f"tolerance {tolerance:g}",
+        (0.03, tolerance),
+        xycoords=("axes fraction", "data"),
+        fontsize=7,
+        color="#555555",
+        va="top",
+        xytext=(0, -2),
+        textcoords="offset points",
     )
     axes.margins(y=0.12)
     axes.set_title("Relative gap while solving", loc="left", fontsize=10)

@@ -34,7 +34,10 @@ FIRST_STEP = 0.05  # tau times the mean Fisher information, at the start
 
 
 def primal_dual(
-    problem: Problem, start: np.ndarray, tolerance: float, blocks: Sequence[Block] | None = None,
+    problem: Problem,
+    start: np.ndarray,
+    tolerance: float,
+    blocks: Sequence[Block] | None = None,
     step: float | None = None,
 ) -> Iterator[State]:
     """Yield states at which the certificate was measured, ever closer to the minimiser.
@@ -64,7 +67,10 @@ class PrimalDual:
     """The iterate of a primal-dual solve and its steps."""
 
     def __init__(
-        self, problem: Problem, start: np.ndarray, blocks: Sequence[Block] | None = None,
+        self,
+        problem: Problem,
+        start: np.ndarray,
+        blocks: Sequence[Block] | None = None,
         step: float | None = None,
     ) -> None:
         likelihood = problem.likelihood
@@ -76,7 +82,7 @@ class PrimalDual:
         for prior in problem.priors:
             if prior.conic_only:
                 raise Unsuitable(
-                    f"prior {type(prior).__name__} exists only as a cvxpy expression; give solver=\"conic\"."
+                    f'prior {type(prior).__name__} exists only as a cvxpy expression; give solver="conic".'
                 )
         self.problem = problem
         self.low, self.high = problem.bounds
@@ -157,9 +163,7 @@ def first_step(likelihood: Likelihood, start: np.ndarray) -> float:
     return FIRST_STEP / bend
 
 
-def _until_next(
-    iteration: int, gap: float, previous: tuple[int, float] | None, tolerance: float
-) -> int:
+def _until_next(iteration: int, gap: float, previous: tuple[int, float] | None, tolerance: float) -> int:
     """Return after how many iterations to measure again: when the gap, falling as lately, is in tolerance."""
     most = min(max(WINDOW, iteration // 2), 25 * WINDOW)
     if previous is None or not 0.0 < gap < previous[1]:

@@ -25,8 +25,11 @@ SOLVERS: dict[str, Solver] = {
 
 
 def solve(
-    problem: Problem, solver: str | Solver | None = None, tolerance: float = 1e-4,
-    max_iterations: int = 30_000, start: np.ndarray | None = None,
+    problem: Problem,
+    solver: str | Solver | None = None,
+    tolerance: float = 1e-4,
+    max_iterations: int = 30_000,
+    start: np.ndarray | None = None,
     callback: Callable[[State], object] | None = None,
 ) -> Solution:
     """Minimise likelihood + priors within the bounds, and say how closely it was done.
@@ -97,7 +100,8 @@ def _start(start: np.ndarray | None, problem: Problem) -> np.ndarray:
     image = np.asarray(start)
     if image.shape != tuple(problem.shape) or image.dtype.kind not in "iuf":
         raise InputError(
-            f"start has shape {image.shape} and type {image.dtype}; give numbers of shape {tuple(problem.shape)}."
+            f"start has shape {image.shape} and type {image.dtype}; give numbers of shape"
+            f" {tuple(problem.shape)}."
         )
     bad = ~np.isfinite(image)
     if bad.any():
@@ -107,7 +111,10 @@ def _start(start: np.ndarray | None, problem: Problem) -> np.ndarray:
 
 
 def _diagnostics(
-    problem: Problem, image: np.ndarray, rows: list[tuple[int, float, float, float, float]], name: str,
+    problem: Problem,
+    image: np.ndarray,
+    rows: list[tuple[int, float, float, float, float]],
+    name: str,
     seconds: float,
 ) -> Diagnostics:
     table = np.array(rows, dtype=np.float64).reshape(-1, 5)

@@ -66,8 +66,12 @@ def check_steps(
 
 
 def _check_step(
-    prior: Any, block: Any, reference: Reference, extrapolated: np.ndarray,
-    settings: tuple[float, float, float], rng: np.random.Generator,
+    prior: Any,
+    block: Any,
+    reference: Reference,
+    extrapolated: np.ndarray,
+    settings: tuple[float, float, float],
+    rng: np.random.Generator,
 ) -> None:
     before = extrapolated.copy()
     fresh = bool(rng.random() < 0.5)
@@ -83,7 +87,11 @@ def _check_step(
 
 
 def _check_certificate(
-    prior: Any, block: Any, reference: Reference, shape: tuple[int, int], size: float,
+    prior: Any,
+    block: Any,
+    reference: Reference,
+    shape: tuple[int, int],
+    size: float,
     rng: np.random.Generator,
 ) -> None:
     """Check that certify gives the penalty of K (image, v), and a lower bound of the value of any image."""

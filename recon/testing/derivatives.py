@@ -27,18 +27,33 @@ def check_derivatives(likelihood: Likelihood, rng: np.random.Generator) -> None:
     for x in points.images(likelihood, rng):
         radius = 0.2 * np.minimum(0.5 * (high - low), np.minimum(x - low, high - x))
         _compare(
-            likelihood, "gradient is not the derivative of value_map", likelihood.value_map,
-            likelihood.gradient, x, radius, 1.0,
+            likelihood,
+            "gradient is not the derivative of value_map",
+            likelihood.value_map,
+            likelihood.gradient,
+            x,
+            radius,
+            1.0,
         )
         score = np.sqrt(np.maximum(likelihood.fisher_information(x), 0.0))
         _compare(
-            likelihood, "curvature is not the derivative of gradient", likelihood.gradient,
-            likelihood.curvature, x, radius, score,
+            likelihood,
+            "curvature is not the derivative of gradient",
+            likelihood.gradient,
+            likelihood.curvature,
+            x,
+            radius,
+            score,
         )
 
 
 def _compare(
-    likelihood: Likelihood, claim: str, function: Map, derivative: Map, x: np.ndarray, radius: np.ndarray,
+    likelihood: Likelihood,
+    claim: str,
+    function: Map,
+    derivative: Map,
+    x: np.ndarray,
+    radius: np.ndarray,
     unit: float | np.ndarray,
 ) -> None:
     """Raise ConformanceError unless the mean of derivative around x is the slope of function there.

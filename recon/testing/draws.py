@@ -25,8 +25,11 @@ def check_draws(likelihood: Likelihood, rng: np.random.Generator) -> None:
     informed = information > 0.0
     information = information[informed]
     require(
-        informed.any() or not likelihood.has_data.any(), likelihood, "fisher_information is zero everywhere",
-        0.0, "some information where there is data",
+        informed.any() or not likelihood.has_data.any(),
+        likelihood,
+        "fisher_information is zero everywhere",
+        0.0,
+        "some information where there is data",
     )
     if not informed.any():
         return
@@ -40,7 +43,9 @@ def check_draws(likelihood: Likelihood, rng: np.random.Generator) -> None:
         drawn = likelihood.draw(x, rng)
         score, curvature = drawn.gradient(x)[informed], drawn.curvature(x)[informed]
         normalised = (
-            score / np.sqrt(information), score**2 / information - 1.0, curvature / information - 1.0,
+            score / np.sqrt(information),
+            score**2 / information - 1.0,
+            curvature / information - 1.0,
         )
         for collected, numbers in zip(statistics.values(), normalised, strict=True):
             collected.append((float(np.mean(numbers)), float(np.mean(signs * numbers))))

@@ -28,7 +28,11 @@ def require(condition: object, subject: object, claim: str, got: Any, expected: 
 
 
 def require_close(
-    subject: object, claim: str, got: ArrayLike, expected: ArrayLike, allowed: ArrayLike,
+    subject: object,
+    claim: str,
+    got: ArrayLike,
+    expected: ArrayLike,
+    allowed: ArrayLike,
     x: ArrayLike | None = None,
 ) -> None:
     """Raise ConformanceError where |got - expected| > allowed or either is NaN, naming the worst place.
@@ -50,7 +54,11 @@ def require_finite(subject: object, claim: str, got: np.ndarray, x: ArrayLike | 
 
 
 def require_at_most(
-    subject: object, claim: str, got: ArrayLike, limit: ArrayLike, allowed: ArrayLike = 0.0,
+    subject: object,
+    claim: str,
+    got: ArrayLike,
+    limit: ArrayLike,
+    allowed: ArrayLike = 0.0,
     x: ArrayLike | None = None,
 ) -> None:
     """Raise ConformanceError where got > limit + allowed or either is NaN, naming the worst place."""
@@ -61,7 +69,12 @@ def require_at_most(
 
 
 def _require_no_excess(
-    subject: object, claim: str, got: np.ndarray, expected: np.ndarray, excess: np.ndarray, relation: str,
+    subject: object,
+    claim: str,
+    got: np.ndarray,
+    expected: np.ndarray,
+    excess: np.ndarray,
+    relation: str,
     x: ArrayLike | None,
 ) -> None:
     excess = np.where(np.isnan(excess), np.inf, excess)

@@ -14,7 +14,11 @@ if TYPE_CHECKING:
 
 
 def check_expression(
-    subject: object, x: cp.Variable, expression: cp.Expression, constraints: list[Any], image: np.ndarray,
+    subject: object,
+    x: cp.Variable,
+    expression: cp.Expression,
+    constraints: list[Any],
+    image: np.ndarray,
     value: float,
 ) -> None:
     """Check that a cvxpy expression of x is convex and has the given value at the image.

@@ -61,7 +61,11 @@ def _rounding(
 
 
 def _check_step(
-    likelihood: Likelihood, start: np.ndarray, adjoint: np.ndarray, step: float, bounds: Bounds,
+    likelihood: Likelihood,
+    start: np.ndarray,
+    adjoint: np.ndarray,
+    step: float,
+    bounds: Bounds,
     relaxation: float,
 ) -> None:
     x, adjoint, extrapolated = start.copy(), adjoint.astype(np.float32), np.full_like(start, np.nan)

@@ -20,8 +20,11 @@ def check_declarations(likelihood: Likelihood) -> None:
     low, high = likelihood.default_bounds
     require(low < high, likelihood, "default_bounds are empty", (low, high), "low below high")
     require(
-        domain.low <= low and high <= domain.high, likelihood, "default_bounds leave the domain",
-        (low, high), f"bounds within [{domain.low}, {domain.high}]",
+        domain.low <= low and high <= domain.high,
+        likelihood,
+        "default_bounds leave the domain",
+        (low, high),
+        f"bounds within [{domain.low}, {domain.high}]",
     )
     for end, is_open in ((domain.low, domain.low_open), (domain.high, domain.high_open)):
         if np.isfinite(end) and not is_open:
@@ -48,14 +51,21 @@ def check_values(likelihood: Likelihood, rng: np.random.Generator) -> None:
             _map(likelihood, name, x)
         total = float(np.sum(deviance))
         require_close(
-            likelihood, "value is not the sum of value_map", likelihood.value(x), total,
+            likelihood,
+            "value is not the sum of value_map",
+            likelihood.value(x),
+            total,
             ROUNDING * (1.0 + total),
         )
         single = x.astype(np.float32)
         expected = likelihood.value_map(single.astype(np.float64))
         require_close(
-            likelihood, "value_map of a float32 image differs from that of the same numbers in float64",
-            likelihood.value_map(single), expected, 1e-5 * (1.0 + expected), single,
+            likelihood,
+            "value_map of a float32 image differs from that of the same numbers in float64",
+            likelihood.value_map(single),
+            expected,
+            1e-5 * (1.0 + expected),
+            single,
         )
 
 

@@ -28,7 +28,10 @@ def main(arguments: list[str] | None = None) -> int:
             rows.append(row)
             if not options.json:
                 mark = "met" if row.met else "SHORT"
-                print(f"{row.group:<10} {row.name:<38} {row.value:>9.3g} {row.unit:<15} {row.wanted:<15} {mark:<6} {row.detail}")
+                print(
+                    f"{row.group:<10} {row.name:<38} {row.value:>9.3g} {row.unit:<15}"
+                    f" {row.wanted:<15} {mark:<6} {row.detail}"
+                )
                 sys.stdout.flush()
     if options.json:
         print(json.dumps([dataclasses.asdict(row) for row in rows], indent=2))

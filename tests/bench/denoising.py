@@ -29,7 +29,9 @@ def rows() -> Iterator[Row]:
     truth = photograph()
     for peak, (plain, best) in WANTED.items():
         scores = {name: best_score(truth, peak, family) for name, family in FAMILIES.items()}
-        listed = ", ".join(f"{name} {score:.2f} (weight {weight:.2f})" for name, (score, weight) in scores.items())
+        listed = ", ".join(
+            f"{name} {score:.2f} (weight {weight:.2f})" for name, (score, weight) in scores.items()
+        )
         yield at_least(GROUP, f"peak {peak}, TV", scores["TV"][0], "dB", plain, listed)
         top = max(scores, key=lambda name: scores[name][0])
         yield at_least(GROUP, f"peak {peak}, best prior", scores[top][0], "dB", best, top)

@@ -19,8 +19,7 @@ def rows() -> Iterator[Row]:
         subprocess.run([sys.executable, *arguments], check=True, capture_output=True)
 
     numpy = seconds(lambda: run("-c", "import numpy"), 9)
-    ours = seconds(lambda: run("-c", "import sys; sys.argv = ['fewcount', '--help'];"
-                               "from recon.cli import main\ntry: main()\nexcept SystemExit: pass"), 9)  # fmt: skip
+    ours = seconds(lambda: run("-m", "recon.cli", "--help"), 9)
     detail = f"{ours * 1e3:.0f} ms over {numpy * 1e3:.0f} ms"
     yield at_most(GROUP, "fewcount --help over import numpy", ours / numpy, "x", 3.0, detail)
     with tempfile.TemporaryDirectory() as folder:

@@ -62,9 +62,7 @@ def test_bad_input_leaves_one_line_and_no_traceback(tmp_path):
         (OSError("Unable to flush\nfile"), 1, "fewcount: cannot write: Unable to flush file"),
     ],
 )  # fmt: skip
-def test_a_job_that_fails_says_so_in_one_line(
-    run, counts_file, tmp_path, monkeypatch, raised, code, said
-):
+def test_a_job_that_fails_says_so_in_one_line(run, counts_file, tmp_path, monkeypatch, raised, code, said):
     def fail(*_, **__):
         raise raised
 

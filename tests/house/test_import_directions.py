@@ -82,7 +82,10 @@ def test_the_engine_imports_downwards(path: Path) -> None:
 def test_the_top_level_holds_the_house_and_nothing_else() -> None:
     allowed = {"README.md", "DEVELOPERS.md", "pyproject.toml", "recon", "priors", "tests", "data"}
     present = {p.name for p in ROOT.iterdir() if not p.name.startswith(".")}
-    assert present - {"build", "dist", "fewcount-out"} - {p for p in present if p.endswith(".egg-info")} == allowed
+    assert (
+        present - {"build", "dist", "fewcount-out"} - {p for p in present if p.endswith(".egg-info")}
+        == allowed
+    )
 
 
 def test_only_the_command_line_prints() -> None:

@@ -97,7 +97,11 @@ CASES = {
     "times": _times(recon.GaussianPulse(3e-10), background=0.05),
     "times, no background, gaps": _times(recon.GaussianPulse(3e-10), MASK),
     "times, maps, medium, delay": _times(
-        recon.GaussianPulse(1e-9), MASK, background=BACKGROUND, refractive_index=1.33, time_zero=4e-9,
+        recon.GaussianPulse(1e-9),
+        MASK,
+        background=BACKGROUND,
+        refractive_index=1.33,
+        time_zero=4e-9,
         offset=RNG.uniform(0.0, 1e-9, SHAPE),
     ),
     "times, pulse with a tail": _times(_tailed_pulse(), background=0.02),

@@ -62,7 +62,5 @@ def test_where_trials_differ_the_data_are_detections_per_trial():
 @pytest.mark.parametrize("rows", [1, 3])
 def test_tags_are_counted_pixel_by_pixel(rows):
     pulse = recon.GaussianPulse(1e-10)
-    tags = recon.TimeTags(
-        [0, 0], [1, 1], [1e-9, 2e-9], shape=(rows, 2), trials=10, period=1e-8, pulse=pulse
-    )
+    tags = recon.TimeTags([0, 0], [1, 1], [1e-9, 2e-9], shape=(rows, 2), trials=10, period=1e-8, pulse=pulse)
     assert detections(tags)[0, 1] == data_image(tags).values[0, 1] == 2

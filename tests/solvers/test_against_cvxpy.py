@@ -1,4 +1,4 @@
-"""Every convex likelihood with every prior reaches the optimum of the conic solver, with a true certificate."""
+"""Every convex likelihood with every prior reaches the conic optimum, with a true certificate."""
 
 import numpy as np
 import pytest
@@ -45,7 +45,7 @@ PRIORS = {
     ),
     "generalized variation": lambda: priors.GeneralizedVariation(1.0),
     "wavelets, translation-invariant": lambda: priors.WaveletSparsity(1.0, levels=2),
-    "wavelets, orthonormal": lambda: priors.WaveletSparsity(1.0, wavelet="db2", levels=2, translation_invariant=False),
+    "wavelets, orthonormal": lambda: priors.WaveletSparsity(1.0, "db2", 2, False),
     "smoothness": lambda: priors.Smoothness(2.0),
     "sum": lambda: priors.TotalVariation(0.7) + priors.Smoothness(0.5),
 }  # fmt: skip
@@ -62,7 +62,7 @@ def test_objective_and_certificate(name: str, prior: str) -> None:
     assert reference.converged
     assert ours.converged
     assert abs(ours.diagnostics.objective - best) <= 1e-4 * best
-    # The objective the conic solver reports is that of the same functions in numpy, and bounds the dual value.
+    # What the conic solver reports is the objective in numpy too, and bounds the dual value.
     reached = problem.objective(np.asarray(reference.image, float))
     np.testing.assert_allclose(reached, best, rtol=2e-5)
     assert ours.diagnostics.dual_value <= reached * (1.0 + 1e-6)
@@ -84,8 +84,12 @@ def test_a_custom_prior_is_solved_conically_and_only_so() -> None:
     import cvxpy as cp
 
     likely = likelihood("gaussian", 3)
-    custom = priors.Custom(lambda x: 1.0 * (cp.sum(cp.abs(cp.diff(x, 1, 0))) + cp.sum(cp.abs(cp.diff(x, 1, 1)))))
-    ours = recon.solve(recon.Problem(likely, priors.TotalVariation(1.0, isotropic=False), (0.0, 8.0)), tolerance=1e-5)
+    custom = priors.Custom(
+        lambda x: 1.0 * (cp.sum(cp.abs(cp.diff(x, 1, 0))) + cp.sum(cp.abs(cp.diff(x, 1, 1))))
+    )
+    ours = recon.solve(
+        recon.Problem(likely, priors.TotalVariation(1.0, isotropic=False), (0.0, 8.0)), tolerance=1e-5
+    )
     theirs = recon.solve(recon.Problem(likely, custom, (0.0, 8.0)), solver="conic")
     np.testing.assert_allclose(ours.diagnostics.objective, theirs.diagnostics.objective, rtol=1e-5)
     with pytest.raises(recon.InputError, match="conic"):

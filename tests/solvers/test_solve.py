@@ -91,7 +91,9 @@ def test_flat_data_converges() -> None:
 @pytest.mark.parametrize("seed", [0, 1, 2])
 def test_no_detection_at_all_gives_zero(seed: int) -> None:
     counts = recon.Counts(np.zeros((8, 9), int), 5, background=0.1 * seed)
-    solution = recon.solve(recon.Problem(recon.likelihoods.BernoulliTrials(counts), priors.TotalVariation(1.0)))
+    solution = recon.solve(
+        recon.Problem(recon.likelihoods.BernoulliTrials(counts), priors.TotalVariation(1.0))
+    )
     assert solution.converged
     np.testing.assert_allclose(solution.image, 0.0, atol=1e-3)
 
@@ -99,9 +101,16 @@ def test_no_detection_at_all_gives_zero(seed: int) -> None:
 def test_weight_has_one_direction() -> None:
     """A larger weight never gives a larger penalty at weight one."""
     image = np.random.default_rng(1).random((16, 16))
-    for family in (priors.TotalVariation, priors.GeneralizedVariation, priors.Smoothness, priors.WaveletSparsity):
+    for family in (
+        priors.TotalVariation,
+        priors.GeneralizedVariation,
+        priors.Smoothness,
+        priors.WaveletSparsity,
+    ):
         rough = [
-            family(1.0).value(recon.solve(recon.Problem(Gaussian(image, 0.05), family(w))).image.astype(float))
+            family(1.0).value(
+                recon.solve(recon.Problem(Gaussian(image, 0.05), family(w))).image.astype(float)
+            )
             for w in (0.1, 1.0, 10.0)
         ]
         assert rough[0] > rough[1] > rough[2] - 1e-6, family
@@ -134,7 +143,10 @@ def test_bad_arguments(problem: recon.Problem, arguments: dict, words: str) -> N
         (lambda L: recon.Problem(L, priors.TotalVariation(1.0), bounds=(-5.0, 1.0)), "bounds is"),
         (lambda L: recon.Problem(L, priors.TotalVariation(1.0), bounds=3), "bounds is"),
         (lambda L: recon.Problem(7, priors.TotalVariation(1.0)), "likelihood is a int"),
-        (lambda L: recon.Problem(L, priors.TotalVariation(1.0, mask=np.ones((3, 3), bool))), "mask has shape"),
+        (
+            lambda L: recon.Problem(L, priors.TotalVariation(1.0, mask=np.ones((3, 3), bool))),
+            "mask has shape",
+        ),
         (lambda L: priors.TotalVariation(-1.0), "weight is -1.0"),
         (lambda L: priors.TotalVariation(float("nan")), "weight is nan"),
         (lambda L: priors.Smoothness("much"), "weight is 'much'"),
