@@ -44,7 +44,7 @@ class Decimated:
         return out
 
     def image(self, coefficients: np.ndarray) -> np.ndarray:
-        """Return the (continued) image of the coefficients: the inverse of `coefficients`, and its adjoint."""
+        """Return the (continued) image of the coefficients: the inverse, and so the adjoint."""
         out = coefficients.copy()
         for rows, columns in reversed(self._halves()):
             low, right = out[:rows, :columns], out[:rows, columns : 2 * columns]

@@ -118,7 +118,7 @@ class Slopes:
         n = rows * columns
 
         def along(axis: int, diagonal: int) -> Any:
-            """Differences to the next pixel (1) or from the last (-1); coefficients are 0 where there is none."""
+            """Differences to the next pixel (1) or from the last (-1)."""
             length = self.shape[axis]
             single = sparse.diags([-1.0 * diagonal, 1.0 * diagonal], [0, diagonal], shape=(length, length))
             if axis == 0:

@@ -3,9 +3,9 @@
 The image is continued beyond its border by half-sample mirroring, as far as the filters reach, so
 nothing wraps round. Level j = 1, 2, ... filters the low-pass image of the level before with the
 wavelet's two filters, 2^(j-1) samples apart and over sqrt(2), along rows and along columns. At every
-pixel and level that gives three details: (low, high), (high, low) and (high, high). Filters so scaled make a tight frame
-of the plane (the squares of all details and of the last low-pass image add up to those of the image);
-at the border mirrored pixels count again.
+pixel and level that gives three details: (low, high), (high, low) and (high, high). Filters so scaled
+make a tight frame of the plane (the squares of all details and of the last low-pass image add up to
+those of the image); at the border mirrored pixels count again.
 """
 
 from __future__ import annotations

@@ -6,7 +6,8 @@ of a pixel for depth z is the logarithm of the odds of signal against background
     log(prior(z))  +  sum over tags in the window of  weight log(1 + p(y - z) / noise),
 
 with the weight a Gaussian of the distance between pixels and prior(z) the depths of the whole scene,
-from the histogram of all tags less its background, with a hundredth of it anywhere.
+from the histogram of all tags less its background, with a hundredth of it anywhere. A pixel with many
+times more tags than others counts no more than a bright one: it may be a hot one.
 """
 
 from __future__ import annotations
@@ -28,6 +29,7 @@ CUT = 3.0  # rms of the window at which it ends
 FAINT = 0.03  # of the noise; fainter parts of the pulse are left out
 ENOUGH = 30.0  # log odds that a window should gather, over the whole of it (measured on simulated scenes)
 NARROWEST, WIDEST = 0.6, 6.0  # rms of the window that `suggested_window` gives, pixels
+MOST = 10.0  # times the mean number of tags (and no less than one) that a pixel counts for
 SCENE_BLUR = 5.0  # of the pulse's core: rms to which the scene's histogram is smoothed
 ANYWHERE = 0.01  # share of the scene that may be at any depth
 LONGEST = 1 << 22  # bins
@@ -80,8 +82,9 @@ def pooled_from(likelihood: DetectionTimes, window: float | None = None) -> Pool
     begin = (whole + np.int32(first)) % np.int32(bins)
     best, top = np.zeros(likelihood.shape), np.zeros(likelihood.shape, np.float32)
     evidence_kernels.pooled(
-        begin, phase, likelihood.start, kind, evidence, _scene(likelihood, bins), _window(rms), best, top
-    )
+        begin, phase, likelihood.start, kind, _trust(likelihood).astype(np.float32), evidence,
+        _scene(likelihood, bins), _window(rms), best, top,
+    )  # fmt: skip
     image = (width * best).astype(np.float32)
     if not top.all():
         nearest = distance_transform_edt(top == 0.0, return_distances=False, return_indices=True)
@@ -93,9 +96,10 @@ def suggested_window(likelihood: DetectionTimes) -> float:
     """Return the rms, in pixels, of a window that gathers enough evidence to tell signal from background.
 
     What a pixel brings on average is the divergence of Kullback and Leibler between its tags with signal
-    and without, integral of (p + noise) log(1 + p / noise) - p for each expected signal tag.
+    and without, integral of (p + noise) log(1 + p / noise) - p for each expected signal tag; more than
+    enough counts as enough.
     """
-    tags = np.where(likelihood.has_data, np.diff(likelihood.start).reshape(likelihood.shape), 0)
+    tags = _tags(likelihood)
     seen = likelihood.noise[likelihood.has_data]
     if not seen.size:
         return WIDEST
@@ -105,8 +109,19 @@ def suggested_window(likelihood: DetectionTimes) -> float:
     divergence = np.array([pulse.step * float(np.sum((p + n) * np.log1p(p / n))) - 1.0 for n in nodes])
     signal = tags / (1.0 + likelihood.noise * pulse.period)
     each = np.interp(np.log(likelihood.noise), np.log(nodes), divergence)
-    mean = float(np.sum(signal * each)) / tags.size
+    mean = float(np.mean(np.minimum(signal * each, ENOUGH)))
     return float(np.clip(math.sqrt(ENOUGH / (2.0 * math.pi * max(mean, 1e-12))), NARROWEST, WIDEST))
+
+
+def _tags(likelihood: DetectionTimes) -> np.ndarray:
+    """Return the number of tags of every pixel, 0 where they tell nothing."""
+    return np.where(likelihood.has_data, np.diff(likelihood.start).reshape(likelihood.shape), 0)
+
+
+def _trust(likelihood: DetectionTimes) -> np.ndarray:
+    """Return the weight of every pixel's tags."""
+    tags = _tags(likelihood)
+    return np.minimum(1.0, MOST * max(1.0, float(tags.mean())) / np.maximum(tags, 1))
 
 
 def _evidence(likelihood: DetectionTimes, width: float, bins: int) -> tuple[np.ndarray, np.ndarray, int]:
@@ -127,13 +142,12 @@ def _evidence(likelihood: DetectionTimes, width: float, bins: int) -> tuple[np.n
 
 def _scene(likelihood: DetectionTimes, bins: int) -> np.ndarray:
     """Return the log of the scene's density of depth, relative to its least (float32, one a bin)."""
-    tags = np.diff(likelihood.start)
-    used = np.repeat(likelihood.has_data.ravel(), tags)
-    place = np.minimum(likelihood.y[used] * (bins / likelihood.pulse.period), bins - 1).astype(np.intp)
-    histogram = np.bincount(place, minlength=bins).astype(np.float64)
-    smooth = gaussian_filter1d(histogram, SCENE_BLUR * FINE, mode="wrap")
+    tags, trust = _tags(likelihood), _trust(likelihood)
+    weight = np.repeat(np.where(likelihood.has_data, trust, 0.0).ravel(), np.diff(likelihood.start))
+    place = np.minimum(likelihood.y * (bins / likelihood.pulse.period), bins - 1).astype(np.int32)
+    smooth = gaussian_filter1d(np.bincount(place, weight, bins), SCENE_BLUR * FINE, mode="wrap")
     noise = likelihood.noise * likelihood.pulse.period
-    background = float(np.sum((tags * (noise / (1.0 + noise)).ravel())[likelihood.has_data.ravel()]))
+    background = float(np.sum(tags * trust * noise / (1.0 + noise)))
     signal = np.maximum(smooth - background / bins, 0.0)
     total = signal.sum()
     if total == 0.0:

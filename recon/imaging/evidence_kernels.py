@@ -13,13 +13,14 @@ NO_NAN = COMPILE | {"fastmath": COMPILE["fastmath"] | {"nnan"}}
 
 
 @numba.njit(parallel=True, **NO_NAN)
-def pooled(begin, phase, start, kind, evidence, scene, window, place, top):
+def pooled(begin, phase, start, kind, trust, evidence, scene, window, place, top):
     """Write the place, in bins, where the pooled evidence is largest, and the evidence there.
 
     The evidence for a bin is scene[bin] plus the sum over tags, of all pixels in the window around, of
-    window[offset] evidence[kind of its pixel, phase of the tag, bin - begin of the tag], round the period.
+    window[offset] trust[pixel] evidence[kind[pixel], phase, bin - begin], round the period.
 
-    begin, phase: (tags,), those of pixel q at start[q] to start[q + 1]; kind: (rows, columns), -1 = skip.
+    begin, phase: (tags,), those of pixel q at start[q] to start[q + 1].
+    kind, trust: (rows, columns), int32 and float32; kind -1 = skip the pixel.
     evidence: (kinds, phases, length) float32, 0 or more; scene: (bins,) float32, 0 or more, length < bins.
     window: (2 r + 1, 2 r + 1) float32. top stays 0 where no tag is in the window.
 
@@ -38,7 +39,7 @@ def pooled(begin, phase, start, kind, evidence, scene, window, place, top):
             first_column, last_column = max(j - reach, 0), min(j + reach, columns - 1)
             for a in range(max(i - reach, 0), min(i + reach + 1, rows)):
                 for b in range(first_column, last_column + 1):
-                    weight = window[a - i + reach, b - j + reach]
+                    weight = window[a - i + reach, b - j + reach] * trust[a, b]
                     if kind[a, b] < 0 or weight == 0.0:
                         continue
                     for k in range(start[a * columns + b], start[a * columns + b + 1]):

@@ -106,7 +106,7 @@ def test_information_between_the_nodes():
 
 
 def test_the_sharpest_bend_of_a_gaussian_is_at_its_peak():
-    """-(log p)'' = 1 / rms^2 everywhere; a floor c flattens it, at the peak to p / (p + c) of that at least."""
+    """-(log p)'' = 1 / rms^2 everywhere; a floor c leaves p / (p + c) of it at the peak."""
     pulse, rms = table(GaussianPulse(0.27e-9)), metres(0.27e-9)
     floor = np.array([1e-6, 1e-3, 1.0, 10.0])
     peak = stats.norm.pdf(0.0, scale=rms)
