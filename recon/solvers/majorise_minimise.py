@@ -21,7 +21,8 @@ from recon.solvers.primal_dual import PrimalDual
 
 CLOSE_ENOUGH = 0.2  # an inner solve ends when its gap is this share of what the majorant could be lowered by
 BETWEEN_CHECKS = 10  # iterations
-LONGEST = 2000  # iterations of one inner solve
+ENOUGH = 300  # iterations of an inner solve that has lowered the objective
+LONGEST = 2000  # iterations of one that has not
 
 
 def majorise_minimise(problem: Problem, start: np.ndarray, tolerance: float) -> Iterator[State]:
@@ -66,5 +67,8 @@ def _minimise(run: PrimalDual, start: float, true_start: float, tolerance: float
         possible = start - state.dual_value
         if state.objective <= start and left <= CLOSE_ENOUGH * possible:
             return state, True
+        lowered = state.objective <= start
+        if lowered and run.iteration >= ENOUGH:
+            return state, True
         if possible <= 0.5 * tolerance * abs(true_start) or run.iteration >= LONGEST:
-            return state, state.objective <= start
+            return state, lowered
