@@ -11,18 +11,28 @@ import sys
 from collections.abc import Iterator
 from contextlib import contextmanager
 
-_FRAMES = """
+# In the order in which the demo comes to need them, less what it begins with itself.
+_LATER = """
 import numpy as np
 import recon
-recon.reconstruct(recon.simulate.frames(np.full((16, 16), 2.0), 0.125, 30, seed=0))
+from recon.imaging.evidence import pooled_depth
+flat = np.full((16, 16), 2.0)
+tags = recon.simulate.time_tags(flat, flat, 10, 1e-7, recon.GaussianPulse(3e-10), 0.05, 0.05, seed=0)
+times = recon.likelihoods.DetectionTimes(tags, flat.astype(np.float32))
+start = pooled_depth(tags, flat.astype(np.float32)).image
+times.value(start), times.fisher_information(start), times.majorise(start), times.signal_tags(start)
+frames = recon.simulate.frames(flat, 0.125, 30, seed=0)
+marks = recon.likelihoods.PoissonMarks(frames)
+marks.majorise(marks.estimate()), marks.value(marks.estimate())
+recon.reconstruct(frames)
 """
 
 
 @contextmanager
-def compiling_for_frames() -> Iterator[None]:
-    """Compile what frames need in a process of its own, which ends with the block at the latest."""
+def compiling_ahead() -> Iterator[None]:
+    """Compile the kernels of depth and yield in a process that ends with the block at the latest."""
     process = subprocess.Popen(
-        [sys.executable, "-c", _FRAMES],
+        [sys.executable, "-c", _LATER],
         stdin=subprocess.DEVNULL,
         stdout=subprocess.DEVNULL,
         stderr=subprocess.DEVNULL,
