@@ -41,7 +41,10 @@ class DepthImage(PhysicalImage):
 
 
 def depth(
-    tags: TimeTags, reflectivity: np.ndarray, prior: Prior | Sum | None = None, effort: Effort | None = None,
+    tags: TimeTags,
+    reflectivity: np.ndarray,
+    prior: Prior | Sum | None = None,
+    effort: Effort | None = None,
     window: float | None = None,
 ) -> DepthImage:
     """Return the depth image that lowers half the deviance of the tags + prior, from `pooled_depth` on.
@@ -60,7 +63,10 @@ def depth(
     problem = Problem(likelihood, terms, scene_bounds(likelihood, start))
     told = effort.callback
     solution = solve(
-        problem, tolerance=effort.tolerance, max_iterations=effort.max_iterations, start=start.image,
+        problem,
+        tolerance=effort.tolerance,
+        max_iterations=effort.max_iterations,
+        start=start.image,
         callback=None if told is None else lambda state: told("depth", state),
     )
     signal = likelihood.signal_tags(solution.image).astype(np.float32)
@@ -69,8 +75,15 @@ def depth(
     uncertainty = local_uncertainty(likelihood, solution.image, problem.bounds)
     uncertainty[filled] = (high - low) / np.sqrt(12.0)
     return DepthImage(
-        image=solution.image, unit="m", uncertainty=uncertainty, filled=filled, priors=problem.priors,
-        bounds=problem.bounds, status=solution.status, diagnostics=solution.diagnostics, start=start,
+        image=solution.image,
+        unit="m",
+        uncertainty=uncertainty,
+        filled=filled,
+        priors=problem.priors,
+        bounds=problem.bounds,
+        status=solution.status,
+        diagnostics=solution.diagnostics,
+        start=start,
         signal_tags=signal,
     )
 

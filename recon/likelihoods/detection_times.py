@@ -50,9 +50,7 @@ class DetectionTimes(Likelihood):
 
     convex = False
 
-    def __init__(
-        self, tags: TimeTags, reflectivity: ArrayLike, background: ArrayLike | None = None
-    ) -> None:
+    def __init__(self, tags: TimeTags, reflectivity: ArrayLike, background: ArrayLike | None = None) -> None:
         from recon.likelihoods import detection_time_kernels as kernels
 
         if not isinstance(tags, TimeTags):
@@ -72,9 +70,7 @@ class DetectionTimes(Likelihood):
         self._metres = SPEED_OF_LIGHT / (2.0 * tags.refractive_index)  # per second
         self.start = tags.start
         delay = np.atleast_2d(np.asarray(tags.time_zero + tags.offset, np.float64))
-        self.y = kernels.ranges(
-            tags.time, tags.start, self.shape[1], delay, self._metres, self.pulse.period
-        )
+        self.y = kernels.ranges(tags.time, tags.start, self.shape[1], delay, self._metres, self.pulse.period)
 
     @property
     def _tags(self) -> tuple[np.ndarray, ...]:

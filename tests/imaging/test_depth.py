@@ -28,9 +28,7 @@ def acquire(scene, seed, detections=1.0, ratio=1.0, reflectivity=None):
     reflectivity = np.ones(scene.shape) if reflectivity is None else reflectivity
     signal = detections * ratio / (1.0 + ratio)
     gain = signal / 1000 / reflectivity.mean()
-    return time_tags(
-        scene, reflectivity, 1000, PERIOD, PULSE, gain, (detections - signal) / 1000, seed=seed
-    )
+    return time_tags(scene, reflectivity, 1000, PERIOD, PULSE, gain, (detections - signal) / 1000, seed=seed)
 
 
 def steps():

@@ -138,9 +138,7 @@ def test_the_parabola_of_a_gaussian_pulse_is_weighted_least_squares():
 
 def test_the_parabola_of_a_coarse_tag_aims_at_the_mean_of_its_interval():
     """Given its interval, the hidden exact time is a truncated Gaussian."""
-    tags = TimeTags(
-        [0], [0], [10e-9], shape=(1, 1), trials=9, period=PERIOD, pulse=GAUSSIAN, interval=2e-9
-    )
+    tags = TimeTags([0], [0], [10e-9], shape=(1, 1), trials=9, period=PERIOD, pulse=GAUSSIAN, interval=2e-9)
     z = np.array([[0.5 * constants.c * 8.3e-9]])
     ends = (np.array([9e-9, 11e-9]) - 8.3e-9) / 0.3e-9
     expected = 0.5 * constants.c * stats.truncnorm.mean(*ends, loc=8.3e-9, scale=0.3e-9)
