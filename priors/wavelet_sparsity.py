@@ -61,7 +61,7 @@ class WaveletSparsity(Prior):
 
     def typical_weight(self, information: float) -> float:
         """See `Prior.typical_weight`; best on photographs with noise at 1 to 10 counts a pixel (measured)."""
-        return (3.2 if self.translation_invariant else 2.5) * information**0.5
+        return 2.0 * information**0.5
 
     def transform(self, shape: tuple[int, int]) -> Undecimated | Decimated:
         """Return the linear map K for images of `shape`."""
