@@ -89,4 +89,6 @@ def relative_gap(objective: float, dual_value: float, pixels: int) -> float:
 
     The floor, a millionth of a half deviance a pixel, lets data that a flat image fits exactly converge.
     """
+    if objective == np.inf:
+        return np.inf
     return (objective - dual_value) / max(abs(objective), pixels * 1e-6)

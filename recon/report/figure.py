@@ -124,7 +124,7 @@ def main_panel(picture: Picture) -> Panel:
 
 
 def side_panels(picture: Picture) -> list[Panel | None]:
-    """Return the small panels row by row; None stands for the course of the solve."""
+    """Return the small panels row by row; None stands for the trace of the solve."""
     look, limits, image = _look(picture), _limits(picture), picture.image
     uncertainty = np.where(image.filled, np.nan, image.uncertainty)
     unit = "" if image.unit == "1" else f" ({image.unit})"

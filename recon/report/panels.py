@@ -1,4 +1,4 @@
-"""One panel of a figure: an image with its colour bar, or the course of a solve."""
+"""One panel of a figure: an image with its colour bar, or the trace of a solve."""
 
 from __future__ import annotations
 

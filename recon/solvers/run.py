@@ -56,8 +56,9 @@ def solve(
     status = Status.ITERATION_LIMIT
     for state in chosen(problem, image, tolerance):
         seconds = time.perf_counter() - began
-        finite = math.isfinite(state.objective) and bool(np.isfinite(state.image.sum(dtype=np.float64)))
-        if not finite and state.ended is None:
+        # An infinite objective is a value like any other: an early iterate may explain a detection by nothing.
+        failed = math.isnan(state.objective) or not np.isfinite(state.image.sum(dtype=np.float64))
+        if failed and state.ended is None:
             status = Status.NOT_FINITE
             break
         image = np.array(state.image, np.float32)

@@ -5,6 +5,7 @@ import pytest
 
 import priors
 import recon
+from recon.diagnostics import relative_gap
 from recon.likelihoods import Gaussian, Poisson
 from recon.solvers import State
 
@@ -59,6 +60,22 @@ def test_a_value_that_is_not_finite_keeps_the_last_finite_image(problem: recon.P
     assert solution.status is recon.Status.NOT_FINITE
     np.testing.assert_array_equal(solution.image, 0.5)
     assert solution.diagnostics.iterations == 1
+
+
+def test_an_infinite_objective_on_the_way_does_not_end_the_solve(problem: recon.Problem) -> None:
+    """Without background an early iterate clipped to zero may explain a detection by nothing."""
+
+    def passing(problem, start, tolerance):
+        yield State(1, np.zeros(problem.shape, np.float32), np.inf, 1.0, np.inf)
+        yield State(2, np.full(problem.shape, 2.0, np.float32), 10.0, 10.0, 0.0)
+
+    solution = recon.solve(problem, solver=passing)
+    assert solution.converged
+    np.testing.assert_array_equal(solution.image, 2.0)
+
+
+def test_the_relative_gap_of_an_infinite_objective_is_infinite() -> None:
+    assert relative_gap(np.inf, 1.0, 100) == np.inf
 
 
 def test_a_start_near_the_answer_is_not_worse(problem: recon.Problem) -> None:
