@@ -56,7 +56,7 @@ def solve(
     status = Status.ITERATION_LIMIT
     for state in chosen(problem, image, tolerance):
         seconds = time.perf_counter() - began
-        # An infinite objective is a value like any other: an early iterate may explain a detection by nothing.
+        # An infinite objective may pass: an early iterate can explain a detection by nothing.
         failed = math.isnan(state.objective) or not np.isfinite(state.image.sum(dtype=np.float64))
         if failed and state.ended is None:
             status = Status.NOT_FINITE
