@@ -2,7 +2,8 @@
 
 PyWavelets' periodization is orthonormal only where every level halves an even length. Other images
 are first continued, by half-sample mirroring at the end of rows and columns, to a multiple of
-2^levels; the map is then no longer orthonormal, and its adjoint is still exact.
+2^levels; the map is then no longer orthonormal, and its adjoint is still exact. Coefficients lie in
+one array like the (continued) image, the coarsest low-pass image first, as usual.
 """
 
 from __future__ import annotations
@@ -11,23 +12,46 @@ import numpy as np
 import pywt
 
 from priors.undecimated import MOST_LEVELS, orthogonal
+from priors.validation import PriorError
 
 MODE = "periodization"
 
 
+def levels_of(size: tuple[int, ...], levels: int | None) -> int:
+    """Return the levels for images of this size, continued or not; None takes 4, fewer for small images."""
+    if levels is None:
+        return max(1, min(MOST_LEVELS, int(np.ceil(np.log2(min(size))))))
+    if levels > 1 and 2**levels > 2 * max(size):
+        raise PriorError(
+            f"levels is {levels}, too many for images of shape {tuple(size)}; give at most"
+            f" {max(1, int(np.log2(2 * max(size))))}."
+        )
+    return levels
+
+
+def scales(size: tuple[int, ...], levels: int) -> tuple[np.ndarray, np.ndarray]:
+    """Return the level of every coefficient (levels + 1: low-pass), and whether both its filters are high."""
+    along = []
+    for n in size:
+        level = np.full(n, levels + 1)
+        for j in range(levels, 0, -1):
+            level[n >> j : n >> (j - 1)] = j
+        along.append(level)
+    rows, columns = np.ix_(*along)
+    return np.minimum(rows, columns), (rows == columns) & (rows <= levels)
+
+
 class Decimated:
-    """The details of images of one shape, all levels in one vector, and the exact adjoint."""
+    """The details of images of one shape (zeros in place of the low-pass image), and the exact adjoint."""
 
     def __init__(self, shape: tuple[int, int], wavelet: str, levels: int | None) -> None:
         self.wavelet = orthogonal(wavelet)
         self.shape = shape
-        most = max(1, min(MOST_LEVELS, int(np.log2(max(min(shape), 2)))))
-        self.levels = most if levels is None else levels
+        self.levels = levels_of(shape, levels)
         unit = 2**self.levels
         self.size = tuple(-(-n // unit) * unit for n in shape)
         self._rows, self._columns = (_continued(n, size) for n, size in zip(shape, self.size, strict=True))
-        self.is_detail = np.ones(self.size, bool)
-        self.is_detail[: self.size[0] // unit, : self.size[1] // unit] = False
+        self._low_pass = (slice(self.size[0] // unit), slice(self.size[1] // unit))
 
     @property
     def orthonormal(self) -> bool:
@@ -58,12 +82,14 @@ class Decimated:
 
     def forward(self, x: np.ndarray) -> np.ndarray:
         """Return the details."""
-        return self.coefficients(x)[self.is_detail]
+        details = self.coefficients(x)
+        details[self._low_pass] = 0.0
+        return details
 
     def adjoint(self, details: np.ndarray) -> np.ndarray:
         """Return the adjoint of `forward`, an image."""
-        coefficients = np.zeros(self.is_detail.shape, details.dtype)
-        coefficients[self.is_detail] = details
+        coefficients = details.copy()
+        coefficients[self._low_pass] = 0.0
         extended = self.image(coefficients)
         tall = np.zeros((self.shape[0], extended.shape[1]), extended.dtype)
         np.add.at(tall, self._rows, extended)

@@ -10,8 +10,6 @@ those of the image); at the border mirrored pixels count again.
 
 from __future__ import annotations
 
-from functools import lru_cache
-
 import numpy as np
 import pywt
 
@@ -41,9 +39,9 @@ class Undecimated:
         filters = orthogonal(wavelet)
         self.shape = shape
         self.wavelet = wavelet
-        self.low = np.array(filters.dec_lo) / np.sqrt(2.0)
-        self.high = np.array(filters.dec_hi) / np.sqrt(2.0)
-        self.levels = _levels(shape, self.low.size) if levels is None else levels
+        # PyWavelets convolves with the decomposition filters: a correlation with these.
+        self.low, self.high = (_padded(taps) / np.sqrt(2.0) for taps in (filters.rec_lo, filters.rec_hi))
+        self.levels = _levels(shape, filters.dec_len, levels)
         reach = [(self.low.size - 1) * (2**j - 1) for j in range(self.levels + 1)]
         self.left = reach[-1] // 2
         self.offsets = [self.left - r // 2 for r in reach[1:]]
@@ -95,35 +93,29 @@ class Undecimated:
 
     @property
     def norm_squared(self) -> float:
-        """An upper bound of the squared norm of `forward`: power iteration plus a twentieth.
+        """An upper bound of the squared norm of `forward`: 1 in the plane, more at a mirroring border."""
+        from priors.undecimated_norm import bound
 
-        What raises the norm above one happens at the border, so a few reaches of the filters of it
-        stand for an image of any size.
-        """
-        enough = 64 + 2 * self.rows.size - 2 * self.shape[0]
-        return _norm_squared(tuple(min(n, enough) for n in self.shape), self.wavelet, self.levels)
+        return bound(self)
 
 
-@lru_cache(maxsize=64)
-def _norm_squared(shape: tuple[int, int], wavelet: str, levels: int) -> float:
-    transform = Undecimated(shape, wavelet, levels)
-    x = np.random.default_rng(0).standard_normal(shape)
-    norm = 0.0
-    for _ in range(60):
-        x /= np.linalg.norm(x)
-        x = transform.adjoint(transform.forward(x))
-        norm = float(np.linalg.norm(x))
-        if norm == 0.0:
-            return 1.0
-    return 1.05 * norm
+def _levels(shape: tuple[int, int], length: int, levels: int | None) -> int:
+    """Return the levels; None takes those for which the mirrored margins stay within the image, 1 to 4."""
+    within, wanted = (2 * min(shape), MOST_LEVELS) if levels is None else (4 * max(shape), levels)
+    most = 1
+    while most < wanted and (length - 1) * (2 ** (most + 1) - 1) <= within:
+        most += 1
+    if levels is not None and levels > most:
+        raise PriorError(
+            f"levels is {levels}, too many for images of shape {tuple(shape)} and filters of {length} taps;"
+            f" give at most {most}."
+        )
+    return most
 
 
-def _levels(shape: tuple[int, int], length: int) -> int:
-    """Return the levels for which the mirrored margin stays within the image: 1 to MOST_LEVELS."""
-    levels = 1
-    while levels < MOST_LEVELS and (length - 1) * (2 ** (levels + 1) - 1) <= 2 * min(shape):
-        levels += 1
-    return levels
+def _padded(taps: list[float]) -> np.ndarray:
+    """Return the taps between zeros, a multiple of four in all: the compiled passes take four at a time."""
+    return np.pad(taps, len(taps) % 4 // 2)
 
 
 def _mirrored(n: int, reach: int, left: int) -> np.ndarray:
