@@ -19,10 +19,10 @@ WANTED = {1: (20.9, 21.4), 2: (22.3, 22.6), 4: (23.5, 23.8), 10: (25.2, 25.5)}
 
 # Factors of sqrt(peak / mean of the photograph), about the square root of a pixel's information.
 FAMILIES: dict[str, tuple[Callable[[float], priors.Prior | priors.Sum], tuple[float, ...]]] = {
-    "TV": (priors.TotalVariation, (1.15, 1.4, 1.6, 1.9, 2.4)),
+    "TV": (priors.TotalVariation, (1.2, 1.56, 1.92, 2.74)),
     "wavelets + TV": (
         lambda w: priors.WaveletSparsity(w) + priors.TotalVariation(0.3 * w),
-        (1.2, 1.5, 1.9),
+        (1.08, 1.32, 1.56, 1.8),
     ),
 }
 
