@@ -103,42 +103,37 @@ def slope_step(v, ahead, p, w_r, w_c, tau, relaxation):
 
 
 @numba.njit(**COMPILE)
-def _first_row(x, below, v_r, v_c, w_r, w_c, inverse_r, inverse_c, out_r, out_c):
-    """Write a row of o (D x - v)."""
-    columns = x.shape[0]
+def _first_row(x, v, i, w_r, w_c, inverse_r, inverse_c, nothing, out):
+    """Write row i of o (D x - v), shape (2, columns)."""
+    rows, columns = x.shape
+    here, below = x[i], x[min(i + 1, rows - 1)]
+    v_r, v_c, out_r, out_c = v[0, i], v[1, i], out[0], out[1]
+    weights_r = nothing if i == rows - 1 else row(w_r, i)
+    weights_c = row(w_c, i)
+    for j in range(columns):
+        out_r[j] = weights_r[j] * (inverse_r * (below[j] - here[j]) - v_r[j])
     for j in range(columns - 1):
-        out_r[j] = w_r[j] * (inverse_r * (below[j] - x[j]) - v_r[j])
-        out_c[j] = w_c[j] * (inverse_c * (x[j + 1] - x[j]) - v_c[j])
-    j = columns - 1
-    out_r[j] = w_r[j] * (inverse_r * (below[j] - x[j]) - v_r[j])
-    out_c[j] = np.float32(0.0)
+        out_c[j] = weights_c[j] * (inverse_c * (here[j + 1] - here[j]) - v_c[j])
+    out_c[columns - 1] = np.float32(0.0)
 
 
 @numba.njit(**COMPILE)
-def _second_row(
-    v_r,
-    v_c,
-    v_r_above,
-    v_c_above,
-    m_r,
-    m_r_above,
-    m_c,
-    m_c_above,
-    inverse_r,
-    inverse_c,
-    out_rr,
-    out_cc,
-    out_rc,
-):
-    """Write a row of E v."""
+def _second_row(v, i, m_r, m_c, inverse_r, inverse_c, nothing, out):
+    """Write row i of E v, shape (3, columns)."""
+    rows, columns = v.shape[1:]
     mixed_r, mixed_c = inverse_r * _HALF_ROOT, inverse_c * _HALF_ROOT
+    up = max(i - 1, 0)
+    v_r, v_c, v_r_above, v_c_above = v[0, i], v[1, i], v[0, up], v[1, up]
+    here_r, above_r = _edge(m_r, i, rows, nothing), _edge(m_r, i - 1, rows, nothing)
+    here_c, above_c = row(m_c, i), _across(m_c, i - 1, nothing)
+    out_rr, out_cc, out_rc = out[0], out[1], out[2]
     out_cc[0] = np.float32(0.0)
-    for j in range(v_r.shape[0]):
-        out_rr[j] = inverse_r * m_r[j] * m_r_above[j] * (v_r[j] - v_r_above[j])
-        out_rc[j] = mixed_r * m_c[j] * m_c_above[j] * (v_c[j] - v_c_above[j])
-    for j in range(1, v_r.shape[0]):
-        out_cc[j] = inverse_c * m_c[j] * m_c[j - 1] * (v_c[j] - v_c[j - 1])
-        out_rc[j] += mixed_c * m_r[j] * m_r[j - 1] * (v_r[j] - v_r[j - 1])
+    for j in range(columns):
+        out_rr[j] = inverse_r * here_r[j] * above_r[j] * (v_r[j] - v_r_above[j])
+        out_rc[j] = mixed_r * here_c[j] * above_c[j] * (v_c[j] - v_c_above[j])
+    for j in range(1, columns):
+        out_cc[j] = inverse_c * here_c[j] * here_c[j - 1] * (v_c[j] - v_c[j - 1])
+        out_rc[j] += mixed_c * here_r[j] * here_r[j - 1] * (v_r[j] - v_r[j - 1])
 
 
 @numba.njit(parallel=True, **COMPILE)
@@ -151,35 +146,8 @@ def dual_step(
     for band in prange(bands):
         buffer = np.empty((5, columns), np.float32)
         for i in range(band * rows // bands, (band + 1) * rows // bands):
-            above = max(i - 1, 0)
-            weights_r = nothing if i == rows - 1 else row(w_r, i)
-            _first_row(
-                x[i],
-                x[min(i + 1, rows - 1)],
-                v[0, i],
-                v[1, i],
-                weights_r,
-                row(w_c, i),
-                inverse_r,
-                inverse_c,
-                buffer[0],
-                buffer[1],
-            )
-            _second_row(
-                v[0, i],
-                v[1, i],
-                v[0, above],
-                v[1, above],
-                _edge(m_r, i, rows, nothing),
-                _edge(m_r, i - 1, rows, nothing),
-                row(m_c, i),
-                _across(m_c, i - 1, nothing),
-                inverse_r,
-                inverse_c,
-                buffer[2],
-                buffer[3],
-                buffer[4],
-            )
+            _first_row(x, v, i, w_r, w_c, inverse_r, inverse_c, nothing, buffer[:2])
+            _second_row(v, i, m_r, m_c, inverse_r, inverse_c, nothing, buffer[2:])
             for j in range(columns):
                 a = p[0, i, j] + sigma * buffer[0, j]
                 b = p[1, i, j] + sigma * buffer[1, j]
@@ -225,35 +193,8 @@ def penalties(x, v, w_r, w_c, m_r, m_c, inverse_r, inverse_c, bands):
     for band in prange(bands):
         buffer = np.empty((5, columns), np.float32)
         for i in range(band * rows // bands, (band + 1) * rows // bands):
-            above = max(i - 1, 0)
-            weights_r = nothing if i == rows - 1 else row(w_r, i)
-            _first_row(
-                x[i],
-                x[min(i + 1, rows - 1)],
-                v[0, i],
-                v[1, i],
-                weights_r,
-                row(w_c, i),
-                inverse_r,
-                inverse_c,
-                buffer[0],
-                buffer[1],
-            )
-            _second_row(
-                v[0, i],
-                v[1, i],
-                v[0, above],
-                v[1, above],
-                _edge(m_r, i, rows, nothing),
-                _edge(m_r, i - 1, rows, nothing),
-                row(m_c, i),
-                _across(m_c, i - 1, nothing),
-                inverse_r,
-                inverse_c,
-                buffer[2],
-                buffer[3],
-                buffer[4],
-            )
+            _first_row(x, v, i, w_r, w_c, inverse_r, inverse_c, nothing, buffer[:2])
+            _second_row(v, i, m_r, m_c, inverse_r, inverse_c, nothing, buffer[2:])
             total, bent = 0.0, 0.0
             for j in range(columns):
                 total += np.sqrt(buffer[0, j] ** 2 + buffer[1, j] ** 2)
@@ -286,22 +227,7 @@ def retreat(q, beyond, m_r, m_c, inverse_r, inverse_c, second, rate, bands):
     for band in prange(bands):
         buffer = np.empty((3, columns), np.float32)
         for i in range(band * rows // bands, (band + 1) * rows // bands):
-            above = max(i - 1, 0)
-            _second_row(
-                beyond[0, i],
-                beyond[1, i],
-                beyond[0, above],
-                beyond[1, above],
-                _edge(m_r, i, rows, nothing),
-                _edge(m_r, i - 1, rows, nothing),
-                row(m_c, i),
-                _across(m_c, i - 1, nothing),
-                inverse_r,
-                inverse_c,
-                buffer[0],
-                buffer[1],
-                buffer[2],
-            )
+            _second_row(beyond, i, m_r, m_c, inverse_r, inverse_c, nothing, buffer)
             for j in range(columns):
                 a = q[0, i, j] - rate * buffer[0, j]
                 b = q[1, i, j] - rate * buffer[1, j]
