@@ -13,8 +13,16 @@ from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from recon import likelihoods, simulate, testing
-    from recon.acquisition import Counts, Frames, GaussianPulse, SampledPulse, TimeTags
+    from recon import instrument, likelihoods, simulate, testing
+    from recon.acquisition import (
+        Counts,
+        DeadTime,
+        Frames,
+        GaussianPulse,
+        SampledPulse,
+        TimeHistogram,
+        TimeTags,
+    )
     from recon.diagnostics import Diagnostics, Status
     from recon.errors import InputError
     from recon.files import load, save
@@ -25,6 +33,7 @@ if TYPE_CHECKING:
 
 _HOMES = {
     "Counts": "acquisition",
+    "DeadTime": "acquisition",
     "Diagnostics": "diagnostics",
     "Frames": "acquisition",
     "GaussianPulse": "acquisition",
@@ -33,17 +42,19 @@ _HOMES = {
     "SampledPulse": "acquisition",
     "Solution": "result",
     "Status": "diagnostics",
+    "TimeHistogram": "acquisition",
     "TimeTags": "acquisition",
     "load": "files",
     "reconstruct": "imaging",
     "save": "files",
     "solve": "solvers",
 }
-_MODULES = ("likelihoods", "simulate", "testing")
+_MODULES = ("instrument", "likelihoods", "simulate", "testing")
 
 __all__ = [
-    "Counts", "Diagnostics", "Frames", "GaussianPulse", "InputError", "Problem", "SampledPulse", "Solution",
-    "Status", "TimeTags", "likelihoods", "load", "reconstruct", "save", "simulate", "solve", "testing",
+    "Counts", "DeadTime", "Diagnostics", "Frames", "GaussianPulse", "InputError", "Problem", "SampledPulse",
+    "Solution", "Status", "TimeHistogram", "TimeTags", "instrument", "likelihoods", "load", "reconstruct", "save",
+    "simulate", "solve", "testing",
 ]  # fmt: skip
 
 

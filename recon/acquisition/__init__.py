@@ -1,8 +1,10 @@
 """What an instrument recorded, with its settings: validated once, immutable."""
 
 from recon.acquisition.counts import Counts
+from recon.acquisition.dead_time import DeadTime
 from recon.acquisition.frames import Frames
 from recon.acquisition.pulses import GaussianPulse, SampledPulse
+from recon.acquisition.time_histogram import TimeHistogram
 from recon.acquisition.time_tags import TimeTags
 
-__all__ = ["Counts", "Frames", "GaussianPulse", "SampledPulse", "TimeTags"]
+__all__ = ["Counts", "DeadTime", "Frames", "GaussianPulse", "SampledPulse", "TimeHistogram", "TimeTags"]

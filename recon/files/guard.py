@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 
 from recon.errors import InputError
 from recon.files.atomic import checked_path
-from recon.validation import memory_limit
+from recon.validation import Range, memory_limit, whole_numbers
 
 FILTERS = {1: "deflate", 2: "shuffle", 3: "fletcher32"}
 DEFLATE_RATIO = 1100  # deflate cannot shrink anything more than 1032 times
@@ -71,6 +71,11 @@ class GuardedFile:
             if values.dtype.kind == "b":
                 return values.view(np.uint8) != 0  # a stored boolean may be any byte
             return values.astype(values.dtype.newbyteorder("="), copy=False)
+
+    def flag(self, place: str) -> bool:
+        """A dataset that is 0 or 1."""
+        name = place.rsplit("/", 1)[-1]
+        return bool(whole_numbers(self.array(place), name, Range("0 or 1", 0, 1)).all())
 
     def string(self, place: str) -> str:
         """A dataset that is one string of fixed length."""

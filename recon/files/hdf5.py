@@ -1,12 +1,15 @@
 """Acquisition files: HDF5 in NeXus layout.
 
-    entry                     NXentry; attributes acquisition ("counts", "time_tags", "frames") and
-                              acquisition_version ("1")
-      data                    NXdata: detections (row, column) or counts (frame, row, column)
+    entry                     NXentry; attributes acquisition ("counts", "time_tags", "time_histogram",
+                              "frames") and acquisition_version ("1")
+      data                    NXdata: detections (row, column), or for a time histogram (row, column, time)
+                              with time at the centre of each bin, or counts (frame, row, column)
       events                  NXevent_data, for time tags in place of data: event_id = row * columns + column
-                              and event_time_offset, since the start of the period. Tags do not say which
-                              period they belong to, so one event_time_zero stands for all
-      instrument/detector     NXdetector: the settings, and pixel_mask (0 = usable)
+                              and event_time_offset, since the start of the period; event_time_dither, if
+                              any, is the delay added. Tags do not say which period they belong to, so one
+                              event_time_zero stands for all
+      instrument/detector     NXdetector: the settings, and pixel_mask (0 = usable); dead_time (of the
+                              detector), electronics_dead_time and dead_time_reset (0 or 1), all or none
       instrument/source       NXsource: period, and pulse_shape with rms, or with times and values
       truth                   NXcollection: the images a simulation started from
       note                    NXnote
@@ -21,35 +24,38 @@ from collections.abc import Mapping
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from recon.acquisition import Counts, Frames, GaussianPulse, SampledPulse, TimeTags
-from recon.acquisition.time_tags import image_shape
+from recon.acquisition import Counts, Frames, TimeHistogram, TimeTags
 from recon.errors import InputError
 from recon.files.atomic import replacing
 from recon.files.guard import GuardedFile, opened
 from recon.files.nexus import NexusWriter
-from recon.validation import Range, whole_numbers
+from recon.files.ranging import (
+    DETECTOR,
+    SOURCE,
+    read_time_histogram,
+    read_time_tags,
+    write_time_histogram,
+    write_time_tags,
+)
 
-Acquisition = Counts | TimeTags | Frames
+Acquisition = Counts | TimeTags | TimeHistogram | Frames
 
 VERSION = "1"
-KINDS = {Counts: "counts", TimeTags: "time_tags", Frames: "frames"}
-DETECTOR = "entry/instrument/detector"
-SOURCE = "entry/instrument/source"
-PULSE = f"{SOURCE}/pulse_shape"
+KINDS = {Counts: "counts", TimeTags: "time_tags", TimeHistogram: "time_histogram", Frames: "frames"}
 RATES = {"trials": (DETECTOR, "1"), "gain": (DETECTOR, "1"), "background": (DETECTOR, "1")}
+RANGING = RATES | {
+    "period": (SOURCE, "s"),
+    "time_zero": (DETECTOR, "s"),
+    "offset": (DETECTOR, "s"),
+    "refractive_index": (DETECTOR, "1"),
+}
 SETTINGS = {  # by kind: name, group and units of what is stored as it stands
     "counts": RATES,
-    "time_tags": RATES
-    | {
-        "period": (SOURCE, "s"),
-        "time_zero": (DETECTOR, "s"),
-        "offset": (DETECTOR, "s"),
-        "refractive_index": (DETECTOR, "1"),
-        "interval": (DETECTOR, "s"),
-    },
+    "time_tags": RANGING | {"interval": (DETECTOR, "s"), "gate": (DETECTOR, "s")},
+    "time_histogram": RANGING | {"bin_width": (DETECTOR, "s"), "first_edge": (DETECTOR, "s")},
     "frames": {"dose": (DETECTOR, "1")},
 }
-OPTIONAL = ("interval",)
+OPTIONAL = ("interval", "gate")
 
 
 def save(
@@ -68,7 +74,9 @@ def save(
     """
     kind = KINDS.get(type(acquisition))
     if kind is None:
-        raise InputError(f"acquisition is {type(acquisition).__name__}; give Counts, TimeTags or Frames.")
+        raise InputError(
+            f"acquisition is {type(acquisition).__name__}; give Counts, TimeTags, a TimeHistogram or Frames."
+        )
     truth = _checked_truth(truth)
     note = _checked_note(note)
     with replacing(path) as temporary, NexusWriter(temporary) as out:
@@ -137,13 +145,8 @@ def _write_counts(out: NexusWriter, counts: Counts) -> None:
 
 
 def _read_counts(file: GuardedFile, settings: dict) -> Counts:
-    several = Range("0 or 1", 0, 1)
-    several_per_trial = whole_numbers(
-        file.array(f"{DETECTOR}/several_per_trial"), "several_per_trial", several
-    )
-    return Counts(
-        file.array("entry/data/detections"), several_per_trial=bool(several_per_trial.all()), **settings
-    )
+    several_per_trial = file.flag(f"{DETECTOR}/several_per_trial")
+    return Counts(file.array("entry/data/detections"), several_per_trial=several_per_trial, **settings)
 
 
 def _write_frames(out: NexusWriter, frames: Frames) -> None:
@@ -154,35 +157,18 @@ def _read_frames(file: GuardedFile, settings: dict) -> Frames:
     return Frames(file.array("entry/data/counts"), **settings)
 
 
-def _write_time_tags(out: NexusWriter, tags: TimeTags) -> None:
-    out.dataset(f"{DETECTOR}/shape", np.array(tags.shape, dtype=np.int64))
-    if isinstance(tags.pulse, GaussianPulse):
-        out.group(PULSE, "NXcollection")
-        out.dataset(f"{PULSE}/rms", tags.pulse.rms, units="s")
-    else:
-        out.data_group(PULSE, "values", tags.pulse.values, ("times",), times=tags.pulse.times)
-    out.group("entry/events", "NXevent_data")
-    out.dataset("entry/events/event_id", tags.row * np.int32(tags.shape[1]) + tags.column)
-    out.dataset("entry/events/event_time_offset", tags.time, units="s")
-    out.dataset("entry/events/event_time_zero", np.zeros(1), units="s")
-    out.dataset("entry/events/event_index", np.zeros(1, dtype=np.int64))
-
-
-def _read_time_tags(file: GuardedFile, settings: dict) -> TimeTags:
-    rows, columns = image_shape(file.array(f"{DETECTOR}/shape"))
-    if file.has(f"{PULSE}/rms"):
-        pulse = GaussianPulse(file.array(f"{PULSE}/rms", units="s"))
-    else:
-        pulse = SampledPulse(file.array(f"{PULSE}/times", units="s"), file.array(f"{PULSE}/values"))
-    pixels = Range(f"whole numbers from 0 to {rows * columns - 1}", 0, rows * columns - 1)
-    pixel = whole_numbers(file.array("entry/events/event_id"), "event_id", pixels)
-    row, column = np.divmod(pixel, np.int32(columns))
-    time = file.array("entry/events/event_time_offset", units="s")
-    return TimeTags(row, column, time, shape=(rows, columns), pulse=pulse, **settings)
-
-
-_WRITERS = {"counts": _write_counts, "time_tags": _write_time_tags, "frames": _write_frames}
-_READERS = {"counts": _read_counts, "time_tags": _read_time_tags, "frames": _read_frames}
+_WRITERS = {
+    "counts": _write_counts,
+    "time_tags": write_time_tags,
+    "time_histogram": write_time_histogram,
+    "frames": _write_frames,
+}
+_READERS = {
+    "counts": _read_counts,
+    "time_tags": read_time_tags,
+    "time_histogram": read_time_histogram,
+    "frames": _read_frames,
+}
 
 
 def _checked_truth(truth: Mapping[str, ArrayLike] | None) -> dict[str, NDArray]:

@@ -57,7 +57,13 @@ class NexusWriter:
             chunk.insert(0, max(1, min(size, items)))
             items //= chunk[0]
         return self._file.create_dataset(
-            place, data=values, chunks=tuple(chunk), compression="gzip", shuffle=True, fletcher32=True
+            place,
+            data=values,
+            chunks=tuple(chunk),
+            maxshape=None if values.size else (None,) * values.ndim,  # else no chunk is allowed
+            compression="gzip",
+            shuffle=True,
+            fletcher32=True,
         )
 
     def _scalar(self, place: str, value: NDArray) -> object:

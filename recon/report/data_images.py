@@ -7,21 +7,21 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from recon.acquisition import Counts, Frames, TimeTags
+from recon.acquisition import Counts, Frames, TimeHistogram, TimeTags
 from recon.imaging.reflectivity import counting_likelihood
 
 if TYPE_CHECKING:
     from recon.imaging import Reconstruction
     from recon.likelihoods import Likelihood
 
-Acquisition = Counts | TimeTags | Frames
+Acquisition = Counts | TimeTags | TimeHistogram | Frames
 
 
 def detections(acquisition: Acquisition) -> np.ndarray:
     """Return the number of detections of every pixel, over all its trials or frames."""
     if isinstance(acquisition, Frames):
         return acquisition.counts.sum(axis=0, dtype=np.int64)
-    return (acquisition.counts() if isinstance(acquisition, TimeTags) else acquisition).detections
+    return _counts(acquisition).detections
 
 
 @dataclass(frozen=True, eq=False)
@@ -63,9 +63,12 @@ def _conventional(name: str, acquisition: Acquisition, reconstruction: Reconstru
     if name == "depth":
         from recon.likelihoods.detection_times import DetectionTimes
 
-        likelihood: Likelihood = DetectionTimes(acquisition, reconstruction.reflectivity.image)
+        tags = acquisition.tags() if isinstance(acquisition, TimeHistogram) else acquisition
+        likelihood: Likelihood = DetectionTimes(tags, reconstruction.reflectivity.image)
     else:
-        likelihood = counting_likelihood(
-            acquisition.counts() if isinstance(acquisition, TimeTags) else acquisition
-        )
+        likelihood = counting_likelihood(_counts(acquisition))
     return np.where(likelihood.has_data, likelihood.estimate(), np.float32(np.nan))
+
+
+def _counts(acquisition: Counts | TimeTags | TimeHistogram) -> Counts:
+    return acquisition if isinstance(acquisition, Counts) else acquisition.counts()

@@ -7,17 +7,19 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from recon.acquisition import Counts, Frames, TimeTags
+from recon.acquisition import Counts, Frames, TimeHistogram, TimeTags
 from recon.report.data_images import detections
 
 if TYPE_CHECKING:
     from recon.imaging import PhysicalImage
     from recon.problem import Prior
 
-KINDS = {Counts: "counts", TimeTags: "time tags", Frames: "frames"}
+KINDS = {Counts: "counts", TimeTags: "time tags", TimeHistogram: "time histogram", Frames: "frames"}
 
 
-def acquisition_record(acquisition: Counts | TimeTags | Frames, note: str = "") -> dict[str, Any]:
+def acquisition_record(
+    acquisition: Counts | TimeTags | TimeHistogram | Frames, note: str = ""
+) -> dict[str, Any]:
     """Return kind, shape, numbers of detections and the note of an acquisition; masked pixels left out."""
     counts = detections(acquisition)
     usable = counts if acquisition.mask is None else counts[acquisition.mask]

@@ -7,10 +7,11 @@ from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 from hypothesis.extra import numpy as hnp
 
-from recon.acquisition import Counts, Frames, GaussianPulse, SampledPulse, TimeTags
+from recon.acquisition import Counts, DeadTime, Frames, GaussianPulse, SampledPulse, TimeHistogram, TimeTags
 from recon.errors import InputError
 
 fuzz = settings(derandomize=True, deadline=None, database=None, max_examples=250)
+fuzz_less = settings(fuzz, max_examples=80)
 
 
 class Hostile:
@@ -142,6 +143,9 @@ def test_sampled_pulses(arguments):
         offset=SETTING,
         refractive_index=st.floats(1, 2),
         interval=st.one_of(st.none(), st.floats(0.1, 2)),
+        dead_time=st.sampled_from([None, DeadTime(0.9), DeadTime(0.0, 0.9, reset_every_period=True)]),
+        gate=st.sampled_from([None, (0.0, 2.0), (0.0, 1.5)]),
+        dither=st.one_of(st.none(), hnp.arrays(float, 4, elements=st.floats(-3, 3))),
     )
 )
 def test_time_tags(arguments):
@@ -149,3 +153,57 @@ def test_time_tags(arguments):
     with REFUSAL:
         tags = TimeTags(**arguments)
         assert tags.start[-1] == tags.time.size == tags.counts().detections.sum()
+
+
+@fuzz_less
+@given(spoiled(detector=st.floats(0, 1), electronics=st.floats(0, 1), reset_every_period=st.booleans()))
+def test_dead_times(arguments):
+    with REFUSAL:
+        dead_time = DeadTime(**arguments)
+        assert 0 < dead_time.blind < np.inf
+        assert bool(dead_time.not_modelled) == (dead_time.electronics > dead_time.detector)
+
+
+@fuzz_less
+@given(
+    spoiled(
+        row=integers(4, 1),
+        column=integers(4, 2),
+        ticks=integers(4, 19),
+        tick=st.floats(0.05, 0.1),
+        period=st.just(2.0),
+        shape=st.just((2, 3)),
+        trials=TRIALS,
+        pulse=st.just(GaussianPulse(1e-2)),
+    )
+)
+def test_ticks(arguments):
+    assume(not isinstance(arguments["shape"], np.ndarray))
+    with REFUSAL:
+        tags = TimeTags.from_ticks(**arguments)
+        assert ((tags.time > 0) & (tags.time < tags.period)).all()
+
+
+@fuzz_less
+@given(
+    spoiled(
+        detections=integers((2, 3, 4), 3),
+        trials=TRIALS,
+        period=st.just(2.0),
+        pulse=st.just(GaussianPulse(1e-2)),
+        bin_width=st.floats(0.1, 0.5),
+        first_edge=st.floats(0, 0.2),
+        gain=SETTING,
+        background=SETTING,
+        mask=MASK,
+        time_zero=st.floats(-1, 1),
+        offset=SETTING,
+        refractive_index=st.floats(1, 2),
+        dead_time=st.sampled_from([None, DeadTime(0.2)]),
+    )
+)
+def test_time_histograms(arguments):
+    with REFUSAL:
+        histogram = TimeHistogram(**arguments)
+        tags = histogram.tags()
+        np.testing.assert_array_equal(tags.counts().detections, histogram.detections.sum(axis=2))

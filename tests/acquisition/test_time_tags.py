@@ -72,6 +72,17 @@ def test_unambiguous_range():
     )
 
 
+@pytest.mark.parametrize("kind", [list, lambda _: np.zeros(0, np.float32), lambda _: np.zeros(0, np.uint16)])
+def test_nothing_may_have_been_detected(kind):
+    tags = TimeTags(*[kind(())] * 3, dither=kind(()), gate=(0, 1e-8), **SETTINGS)
+    assert (tags.row.dtype, tags.column.dtype, tags.time.dtype) == (np.int32, np.int32, np.float64)
+    assert tags.dither.dtype == np.float64
+    assert tags.time.shape == (0,)
+    assert not tags.start.any()
+    assert tags.start.shape == (21,)
+    np.testing.assert_array_equal(tags.counts().detections, np.zeros((4, 5)))
+
+
 def test_times_up_to_but_not_including_the_period():
     last = np.nextafter(PERIOD, 0)
     assert TimeTags([0, 0], [0, 0], [0.0, last], **SETTINGS).time.tolist() == [0.0, last]
@@ -92,7 +103,11 @@ def test_times_up_to_but_not_including_the_period():
         ([0, 0], [0, 0], [np.inf, 0], r"time at \(0,\) is inf; give seconds"),
         ([0, 0], [0, 0], [0], r"row has shape \(2,\), column \(2,\) and time \(1,\)"),
         ([[0]], [[0]], [[0]], r"row has shape \(1, 1\)"),
-        ([], [], [], "row is empty"),
+        ([], [0], [0], r"row has shape \(0,\), column \(1,\)"),
+        (np.zeros((0, 2)), [], [], "row is empty"),
+        (np.ma.masked_all(0), [], [], "row is a masked array"),
+        (np.zeros(0, bool), [], [], "row holds bool"),
+        ([], [], [[]], "time is empty"),
         ([True], [0], [0], "row holds bool"),
         ([0], [0], ["now"], "time holds str"),
     ],

@@ -5,7 +5,7 @@ import dataclasses
 import numpy as np
 import pytest
 
-from recon.acquisition import Counts, Frames, GaussianPulse, SampledPulse, TimeTags
+from recon.acquisition import Counts, DeadTime, Frames, GaussianPulse, SampledPulse, TimeHistogram, TimeTags
 
 SHAPE = (6, 5)
 
@@ -56,6 +56,52 @@ def _tags_maps(rng):
     )
 
 
+def _tags_clocked(rng):
+    row, column = rng.integers(0, 6, 90), rng.integers(0, 5, 90)
+    return TimeTags.from_ticks(
+        row,
+        column,
+        rng.integers(300, 600, 90),
+        tick=1e-10,
+        shape=SHAPE,
+        trials=700,
+        period=1e-7,
+        pulse=GaussianPulse(0.3e-9),
+        dead_time=DeadTime(20e-9 / 3, 80e-9),
+        gate=(1e-8 / 3, 7e-8),
+        dither=rng.random(90) * 1e-8,
+    )
+
+
+def _tags_none(rng):
+    nothing = {"shape": SHAPE, "trials": 700, "period": 1e-7, "pulse": GaussianPulse(0.3e-9)}
+    return TimeTags([], [], [], dither=[], dead_time=DeadTime(0, 1e-9, reset_every_period=True), **nothing)
+
+
+def _histogram(rng, **settings):
+    cube = rng.poisson(0.2, (*SHAPE, 40)).astype(np.uint16)
+    return TimeHistogram(cube, trials=700, period=1e-7, bin_width=1e-9 / 3, **settings)
+
+
+def _histogram_plain(rng):
+    return _histogram(rng, pulse=GaussianPulse(0.3e-9))
+
+
+def _histogram_maps(rng):
+    return _histogram(
+        rng,
+        pulse=SampledPulse(np.sort(rng.random(20)) * 1e-9, rng.random(20)),
+        first_edge=1e-8 / 3,
+        gain=rng.random(SHAPE) + 0.1,
+        background=rng.random(SHAPE).astype(np.float32),
+        mask=_mask(),
+        time_zero=-1e-9 / 3,
+        offset=rng.normal(size=SHAPE) * 1e-9,
+        refractive_index=1.33,
+        dead_time=DeadTime(20e-9 / 3, reset_every_period=True),
+    )
+
+
 def _frames_plain(rng):
     return Frames(rng.integers(0, 5, (4, *SHAPE), dtype=np.uint8), 0.1)
 
@@ -64,7 +110,10 @@ def _frames_maps(rng):
     return Frames(rng.integers(0, 500, (4, *SHAPE), dtype=np.int16), rng.random(SHAPE) + 0.1, _mask())
 
 
-MAKERS = [_counts_plain, _counts_maps, _tags_plain, _tags_maps, _frames_plain, _frames_maps]
+MAKERS = [
+    _counts_plain, _counts_maps, _tags_plain, _tags_maps, _tags_clocked, _tags_none, _histogram_plain,
+    _histogram_maps, _frames_plain, _frames_maps,
+]  # fmt: skip
 
 
 @pytest.fixture(params=MAKERS, ids=[maker.__name__[1:] for maker in MAKERS])
@@ -81,6 +130,21 @@ def counts():
 @pytest.fixture(scope="session")
 def tags():
     return _tags_maps(np.random.default_rng(6))
+
+
+@pytest.fixture(scope="session")
+def clocked():
+    return _tags_clocked(np.random.default_rng(8))
+
+
+@pytest.fixture(scope="session")
+def nothing():
+    return _tags_none(np.random.default_rng(8))
+
+
+@pytest.fixture(scope="session")
+def histogram():
+    return _histogram_maps(np.random.default_rng(9))
 
 
 @pytest.fixture(scope="session")

@@ -65,6 +65,42 @@ def test_time_tags(tags, tmp_path):
             assert setting.attrs["units"] == b"s"
 
 
+def test_clocks(clocked, tmp_path):
+    save(tmp_path / "a.h5", clocked)
+    with h5py.File(tmp_path / "a.h5") as file:
+        detector, dither = file["entry/instrument/detector"], file["entry/events/event_time_dither"]
+        assert detector["dead_time"][()] == 20e-9 / 3
+        assert detector["electronics_dead_time"][()] == 80e-9
+        assert detector["dead_time_reset"][()] == 0
+        np.testing.assert_array_equal(detector["gate"], [1e-8 / 3, 7e-8])
+        np.testing.assert_array_equal(dither, clocked.dither)
+        for stored in (detector["dead_time"], detector["electronics_dead_time"], detector["gate"], dither):
+            assert stored.attrs["units"] == b"s"
+
+
+def test_histogram(histogram, tmp_path):
+    save(tmp_path / "a.h5", histogram)
+    common = {name: kind for name, kind in COMMON.items() if name not in ("entry/truth", "entry/note")}
+    assert classes(tmp_path / "a.h5") == common | {
+        "entry/data": "NXdata",
+        "entry/instrument/source": "NXsource",
+        "entry/instrument/source/pulse_shape": "NXdata",
+    }
+    with h5py.File(tmp_path / "a.h5") as file:
+        assert file["entry"].attrs["default"] == b"data"
+        assert file["entry"].attrs["acquisition"] == b"time_histogram"
+        data = file["entry/data"]
+        assert data.attrs["signal"] == b"detections"
+        assert data.attrs["axes"].tolist() == [b"row", b"column", b"time"]
+        np.testing.assert_array_equal(data["detections"], histogram.detections)
+        np.testing.assert_allclose(data["time"], 1e-8 / 3 + (np.arange(40) + 0.5) * 1e-9 / 3, rtol=1e-14)
+        assert data["time"].attrs["units"] == b"s"
+        detector = file["entry/instrument/detector"]
+        for name, value in [("bin_width", 1e-9 / 3), ("first_edge", 1e-8 / 3)]:
+            assert detector[name][()] == value
+            assert detector[name].attrs["units"] == b"s"
+
+
 def test_a_file_made_with_plain_h5py_is_read(tmp_path):
     """The documented layout is enough: no checksums, big-endian numbers, unsorted events, 2-byte ids."""
     path = tmp_path / "foreign.h5"
@@ -89,7 +125,17 @@ def test_a_file_made_with_plain_h5py_is_read(tmp_path):
     assert tags.pulse.rms == 1e-9
 
 
-@pytest.mark.parametrize("name", ["counts", "tags", "frames"])
+@pytest.mark.parametrize("settings", [{}, {"chunks": (7,), "maxshape": (None,)}])
+def test_a_file_without_events_is_read(tags, tmp_path, settings):
+    save(tmp_path / "a.h5", tags)
+    with h5py.File(tmp_path / "a.h5", "r+") as file:
+        for name, kind in [("event_id", "i4"), ("event_time_offset", "f4")]:
+            del file[f"entry/events/{name}"]
+            file["entry/events"].create_dataset(name, shape=(0,), dtype=kind, **settings)
+    assert load(tmp_path / "a.h5").counts().detections.sum() == 0
+
+
+@pytest.mark.parametrize("name", ["counts", "tags", "clocked", "nothing", "histogram", "frames"])
 def test_every_stored_byte_is_under_a_checksum(name, request, tmp_path):
     save(tmp_path / "a.h5", request.getfixturevalue(name))
     with h5py.File(tmp_path / "a.h5") as file:

@@ -86,7 +86,7 @@ def test_missing_and_unknown_kinds(path):
             file["entry"].attrs[name] = value
 
     attribute("acquisition", np.bytes_("spectrum"))
-    refused(path, "entry@acquisition is spectrum; give one of counts, time_tags, frames")
+    refused(path, "entry@acquisition is spectrum; give one of counts, time_tags, time_histogram, frames")
     attribute("acquisition", np.bytes_("frames"))
     refused(path, "entry/instrument/detector/dose is missing")
     attribute("acquisition", 3)
@@ -126,6 +126,90 @@ def test_wrong_pixels_and_flags(path, counts, tmp_path):
     save(tmp_path / "b.h5", counts)
     replaced(tmp_path / "b.h5", f"{DETECTOR}/several_per_trial", data=7)
     refused(tmp_path / "b.h5", "several_per_trial is 7; give 0 or 1")
+
+
+@pytest.fixture
+def clocked_path(clocked, tmp_path):
+    save(tmp_path / "c.h5", clocked)
+    return tmp_path / "c.h5"
+
+
+@pytest.fixture
+def histogram_path(histogram, tmp_path):
+    save(tmp_path / "h.h5", histogram)
+    return tmp_path / "h.h5"
+
+
+@pytest.mark.parametrize("name", ["dead_time", "electronics_dead_time", "dead_time_reset"])
+def test_part_of_a_dead_time_is_not_taken_for_none(clocked_path, name):
+    with h5py.File(clocked_path, "r+") as file:
+        del file[f"{DETECTOR}/{name}"]
+    refused(clocked_path, f"{DETECTOR}/{name} is missing; add it")
+
+
+@pytest.mark.parametrize("name", ["bin_width", "first_edge"])
+def test_a_histogram_says_where_its_bins_are(histogram_path, name):
+    with h5py.File(histogram_path, "r+") as file:
+        del file[f"{DETECTOR}/{name}"]
+    refused(histogram_path, f"{DETECTOR}/{name} is missing; add it")
+
+
+@pytest.mark.parametrize(
+    ("place", "value", "message"),
+    [
+        (f"{DETECTOR}/dead_time", -1.0, r"detector is -1\.0; give a time in seconds"),
+        (f"{DETECTOR}/dead_time", [1e-9, 1e-9], r"detector has shape \(2,\)"),
+        (f"{DETECTOR}/dead_time", 1e-3, r"detections at .* allows in the trials"),
+        (f"{DETECTOR}/dead_time_reset", 2, "dead_time_reset is 2; give 0 or 1"),
+        (f"{DETECTOR}/gate", [1e-8, 2e-7], r"gate at \(1,\) is 2e-07"),
+        (f"{DETECTOR}/gate", [1e-8, 4e-8], r"time at \(\d+,\) is .*; give seconds within gate"),
+        (f"{DETECTOR}/gate", 1e-8, r"gate has shape \(\)"),
+        ("entry/events/event_time_dither", np.zeros(89), r"dither has shape \(89,\) and time \(90,\)"),
+        ("entry/events/event_time_dither", np.full(90, np.nan), r"dither at \(0,\) is nan"),
+        ("entry/events/event_id", np.zeros(0, int), r"row has shape \(0,\)"),
+        ("entry/events/event_time_offset", np.zeros((0, 90)), "time is empty"),
+    ],
+)
+def test_wrong_clocks(clocked_path, place, value, message):
+    replaced(clocked_path, place, data=value)
+    refused(clocked_path, message)
+
+
+@pytest.mark.parametrize(
+    ("place", "value", "message"),
+    [
+        ("entry/data/detections", np.ones((6, 5)), r"detections has shape \(6, 5\); give a"),
+        ("entry/data/detections", np.full((6, 5, 3), -1), r"detections at \(0, 0, 0\) is -1"),
+        ("entry/data/detections", np.zeros((6, 5, 0), int), "detections is empty"),
+        ("entry/data/detections", np.ones((6, 5, 400), int), "the 400 bins of detections run from"),
+        (f"{DETECTOR}/bin_width", 1e-8, "the 40 bins of detections run from"),
+    ],
+)
+def test_wrong_histograms(histogram_path, place, value, message):
+    replaced(histogram_path, place, data=value)
+    refused(histogram_path, message)
+
+
+def test_clocks_and_histograms_in_other_units_are_not_misread(clocked_path, histogram_path):
+    for path, place in [
+        (clocked_path, f"{DETECTOR}/gate"),
+        (clocked_path, f"{DETECTOR}/electronics_dead_time"),
+        (clocked_path, "entry/events/event_time_dither"),
+        (histogram_path, f"{DETECTOR}/bin_width"),
+    ]:
+        with h5py.File(path, "r+") as file:
+            file[place].attrs["units"] = np.bytes_("ns")
+        refused(path, f"{place} is in ns; store it in s")
+        with h5py.File(path, "r+") as file:
+            file[place].attrs["units"] = np.bytes_("s")
+
+
+def test_histograms_beyond_the_file(histogram_path):
+    place = "entry/data/detections"
+    replaced(histogram_path, place, shape=(10**4, 10**4, 10**4), dtype="u1", chunks=(1, 100, 100))
+    refused(histogram_path, "detections has shape .*, which is 1000000000000 bytes")
+    replaced(histogram_path, place, shape=(6, 5, 40), dtype="u1", chunks=(6, 5, 40))
+    refused(histogram_path, "but not all of its values are stored")
 
 
 def test_other_units_are_not_misread(path):

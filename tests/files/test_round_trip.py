@@ -59,7 +59,9 @@ def test_dark_images_are_not_taken_for_bombs(tmp_path, monkeypatch):
 
 @pytest.mark.parametrize("thing", [None, 3, np.zeros((2, 2)), {"detections": [[1]]}, object()])
 def test_other_things_are_refused(thing, tmp_path):
-    with pytest.raises(InputError, match=r"acquisition is .*; give Counts, TimeTags or Frames"):
+    with pytest.raises(
+        InputError, match=r"acquisition is .*; give Counts, TimeTags, a TimeHistogram or Frames"
+    ):
         save(tmp_path / "a.h5", thing)
     assert list(tmp_path.iterdir()) == []
 

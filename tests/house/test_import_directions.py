@@ -23,7 +23,7 @@ LAYERS = [
 ]
 # These stand beside the solvers: they know acquisitions (and, for testing, the contracts) and no more.
 LIMITED = {
-    "simulate": {"errors", "validation", "acquisition", "simulate"},
+    "simulate": {"errors", "validation", "kernels", "acquisition", "simulate"},
     "files": {"errors", "validation", "acquisition", "files", "diagnostics", "imaging"},
     "testing": {"errors", "validation", "likelihoods", "testing"},
 }
