@@ -23,6 +23,17 @@ def positive_whole(value: ArrayLike, name: str) -> int:
     return int(result)
 
 
+def boolean_map(value: ArrayLike, name: str, shape: tuple[int, int]) -> NDArray[np.bool_]:
+    """The value as a boolean map (rows, columns)."""
+    values = np.asarray(value)
+    if values.dtype.kind != "b" or values.shape != shape:
+        raise InputError(
+            f"{name} has shape {values.shape} and type {values.dtype.name}; "
+            f"give a boolean map of shape {shape}."
+        )
+    return values
+
+
 def generator(seed: int | np.random.Generator) -> np.random.Generator:
     """The random generator that `seed` names, or `seed` itself if it is one."""
     if isinstance(seed, np.random.Generator):

@@ -3,7 +3,7 @@
 import numpy as np
 import pytest
 
-from recon.acquisition import GaussianPulse
+from recon.acquisition import DeadTime, GaussianPulse
 from recon.errors import InputError
 from recon.simulate import counts, frames, time_tags
 
@@ -58,7 +58,7 @@ CASES = [
     (time_tags, TAGS, {"reflectivity": IMAGE.T}, r"reflectivity has shape \(4, 3\)"),
     (time_tags, TAGS, {"trials": 1e12}, r"reflectivity, .* call for 6e\+12 photons"),
     (time_tags, TAGS, {"trials": 1e300, "gain": 1e300}, "call for inf photons"),
-    (time_tags, TAGS, {"reflectivity": 0 * IMAGE}, "trials expects 0 photons"),
+    (time_tags, TAGS, {"trials": 0}, "trials is 0"),
     (time_tags, TAGS, {"period": 0.0}, "period is 0"),
     (time_tags, TAGS, {"pulse": 1e-9}, "pulse is a float"),
     (time_tags, TAGS, {"background": -0.1}, "background is -0.1"),
@@ -67,6 +67,21 @@ CASES = [
     (time_tags, TAGS, {"refractive_index": 0.0}, "refractive_index is 0"),
     (time_tags, TAGS, {"interval": 0.3e-7}, "interval is 3e-08 s; give one that divides"),
     (time_tags, TAGS, {"interval": 2e-7}, "interval is 2e-07 s; give one that divides"),
+    (time_tags, TAGS, {"dither": 1e-9}, "dither is 1e-09 and interval None"),
+    (time_tags, TAGS, {"dither": -1e-9, "interval": 1e-9}, "dither is -1e-09"),
+    (time_tags, TAGS, {"dither": "some", "interval": 1e-9}, "dither"),
+    (time_tags, TAGS, {"gate": (2e-8, 1e-8)}, r"gate is \(2e-08, 1e-08\)"),
+    (time_tags, TAGS, {"gate": (1.5e-9, 1e-8), "interval": 1e-9}, r"gate is \(1.5e-09, 1e-08\) s, parts"),
+    (time_tags, TAGS, {"dead_time": 1e-8}, "dead_time is float"),
+    (time_tags, TAGS, {"dead_time": DeadTime(1e-8), "trials": 2.5}, "trials is 2.5; give whole periods"),
+    (time_tags, TAGS, {"dead_time": DeadTime(1e-8), "trials": 2.5 + 0 * IMAGE}, r"trials at \(0, 0\) is 2.5"),
+    (time_tags, TAGS, {"jitter": -1e-9}, "jitter is -1e-09"),
+    (time_tags, TAGS, {"jitter": np.nan}, "jitter is nan"),
+    (time_tags, TAGS, {"hot": NEGATIVE}, r"hot at \(2, 0\) is -0\.25"),
+    (time_tags, TAGS, {"hot": IMAGE.T}, r"hot has shape \(4, 3\)"),
+    (time_tags, TAGS, {"hot": 1e12}, r"call for 6e\+13 photons"),
+    (time_tags, TAGS, {"dead": IMAGE}, r"dead has shape \(3, 4\) and type float64"),
+    (time_tags, TAGS, {"dead": IMAGE.T > 0}, r"dead has shape \(4, 3\) and type bool"),
     (time_tags, TAGS, {"seed": 1.5}, "seed is 1.5"),
     (frames, FRAMES, {"eta": WITH_NAN}, r"eta at \(1, 2\) is nan"),
     (frames, FRAMES, {"eta": NEGATIVE}, r"eta at \(2, 0\)"),
