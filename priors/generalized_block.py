@@ -2,15 +2,17 @@
 
 from __future__ import annotations
 
+import math
 from typing import TYPE_CHECKING
 
 import numpy as np
+from scipy.ndimage import minimum_filter
 
 from priors import generalized_kernels as kernels
 from priors.difference_kernels import squared_distance
 from priors.kernels import bands
 
-RETREATS = 8
+RETREATS = 40  # steps of `certify`
 
 if TYPE_CHECKING:
     from priors.generalized_variation import GeneralizedVariation
@@ -32,8 +34,7 @@ class GeneralizedBlock:
         self._inverse = tuple(np.float32(i) for i in slopes.inverse_spacing)
         self._limits = tuple(np.float32(limit) for limit in prior.limits)
         steep = 4.0 * sum(i * i for i in slopes.inverse_spacing)
-        lightest = min((float(w[w > 0.0].min()) for w in self._weights if (w > 0.0).any()), default=1.0)
-        self._rate = np.float32(1.9 * lightest**2 / steep)
+        self._rates = _rates(self._weights, shape, steep)
         self._bands = bands(shape[0])
         self._marked: tuple[np.ndarray, np.ndarray] | None = None
 
@@ -70,18 +71,23 @@ class GeneralizedBlock:
     def certify(self, image: np.ndarray, adjoint: np.ndarray, fresh: bool) -> tuple[float, float]:
         """See `Block.certify`; the dual point is near that of `GeneralizedVariation.feasible`.
 
-        A few gradient steps take back most of what the first-order duals would be beyond their disc
-        before the rest is scaled down: it is the worst pixel that decides the scale.
+        The second-order duals are moved to where the first-order ones they ask for stay inside their disc, by
+        accelerated gradient steps (Nesterov 1983) as long at each pixel as the edge weights around it allow.
+        What is beyond even so is scaled down: it is the worst pixel that decides the scale.
         """
         first, second = self._limits
         pull, dual = self._ahead, self.second.copy()
         kernels.retreat(
-            dual, np.zeros_like(pull), *self._exists, *self._inverse, second, self._rate, self._bands
+            dual, np.zeros_like(pull), *self._exists, *self._inverse, second, self._rates, self._bands
         )
+        ahead, momentum = dual.copy(), 1.0
         for _ in range(RETREATS):
-            kernels.pull(dual, *self._exists, *self._inverse, pull, self._bands)
+            kernels.pull(ahead, *self._exists, *self._inverse, pull, self._bands)
             kernels.excess(pull, *self._weights, first)
-            kernels.retreat(dual, pull, *self._exists, *self._inverse, second, self._rate, self._bands)
+            kernels.retreat(ahead, pull, *self._exists, *self._inverse, second, self._rates, self._bands)
+            following = 0.5 * (1.0 + math.sqrt(1.0 + 4.0 * momentum * momentum))
+            overshoot = np.float32((momentum - 1.0) / following)
+            dual, ahead, momentum = ahead, ahead + overshoot * (ahead - dual), following
         kernels.pull(dual, *self._exists, *self._inverse, pull, self._bands)
         for part, weights in zip(pull, self._weights, strict=True):
             np.divide(part, weights, out=part, where=weights > 0.0)
@@ -106,6 +112,15 @@ class GeneralizedBlock:
     def forget(self) -> None:
         """See `Block.forget`."""
         self._marked = None
+
+
+def _rates(weights: tuple[np.ndarray, ...], shape: tuple[int, int], steep: float) -> np.ndarray:
+    """Return how far a retreat may step at each pixel: by the square of the lightest weight it can touch."""
+    lightest = np.full(shape, np.inf, np.float32)
+    for part in weights:
+        np.minimum(lightest, np.where(part > 0.0, part, np.inf), out=lightest)
+    near = minimum_filter(lightest, 3)
+    return np.where(np.isfinite(near), near * near * np.float32(0.95 / steep), 0.0).astype(np.float32)
 
 
 def minimise_over_slopes(prior: GeneralizedVariation, image: np.ndarray, tolerance: float = 1e-6) -> float:

@@ -205,7 +205,7 @@ def penalties(x, v, w_r, w_c, m_r, m_c, inverse_r, inverse_c, bands):
 
 @numba.njit(parallel=True, **COMPILE)
 def excess(pull, w_r, w_c, first):
-    """Turn E' q into 1/o times the excess, beyond the disc, of the first-order duals it asks for."""
+    """Turn E' q into what of it is beyond the first-order duals' disc."""
     rows, columns = pull.shape[1:]
     for i in prange(rows):
         a, b = row(w_r, i), row(w_c, i)
@@ -229,8 +229,8 @@ def retreat(q, beyond, m_r, m_c, inverse_r, inverse_c, second, rate, bands):
         for i in range(band * rows // bands, (band + 1) * rows // bands):
             _second_row(beyond, i, m_r, m_c, inverse_r, inverse_c, nothing, buffer)
             for j in range(columns):
-                a = q[0, i, j] - rate * buffer[0, j]
-                b = q[1, i, j] - rate * buffer[1, j]
-                c = q[2, i, j] - rate * buffer[2, j]
+                a = q[0, i, j] - rate[i, j] * buffer[0, j]
+                b = q[1, i, j] - rate[i, j] * buffer[1, j]
+                c = q[2, i, j] - rate[i, j] * buffer[2, j]
                 scale = second / np.sqrt(max(a * a + b * b + c * c, second * second))
                 q[0, i, j], q[1, i, j], q[2, i, j] = a * scale, b * scale, c * scale

@@ -6,6 +6,7 @@ from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
+    from recon.likelihoods.analog_marks import AnalogMarks
     from recon.likelihoods.bernoulli_trials import BernoulliTrials
     from recon.likelihoods.contract import Interval, Likelihood
     from recon.likelihoods.detection_times import DetectionTimes
@@ -14,6 +15,7 @@ if TYPE_CHECKING:
     from recon.likelihoods.poisson_marks import PoissonMarks
 
 _HOMES = {
+    "AnalogMarks": "analog_marks",
     "BernoulliTrials": "bernoulli_trials",
     "DetectionTimes": "detection_times",
     "Gaussian": "gaussian",
@@ -24,7 +26,8 @@ _HOMES = {
 }
 
 __all__ = [
-    "BernoulliTrials", "DetectionTimes", "Gaussian", "Interval", "Likelihood", "Poisson", "PoissonMarks",
+    "AnalogMarks", "BernoulliTrials", "DetectionTimes", "Gaussian", "Interval", "Likelihood", "Poisson",
+    "PoissonMarks",
 ]  # fmt: skip
 
 

@@ -38,6 +38,29 @@ def density(u, low, step, pieces):
     return p, p * slope, p * (bend + slope * slope)
 
 
+@numba.njit(inline="always", **COMPILE)
+def cumulative(u, low, step, shares, period):
+    """Return the integral of p from low to any u; shares is that of `RangePulse`."""
+    turns = math.floor((u - low) / period)
+    x = (u - low - turns * period) / step
+    cell = int(x)
+    if cell >= shares.shape[0]:
+        return turns + 1.0
+    v = x - cell
+    c = shares[cell]
+    return turns + (c[0] + v * (c[1] + v * (c[2] + v * (c[3] + v * (c[4] + v * c[5])))))
+
+
+@numba.njit(**COMPILE)
+def locate(places, place, period):
+    """Return how many of ascending places, repeated every period without end, lie below a place.
+
+    Those below 0 count as less than none.
+    """
+    turns = math.floor(place / period)
+    return int(turns) * places.size + np.searchsorted(places, place - turns * period)
+
+
 @numba.njit(parallel=True, **COMPILE)
 def ranges(time, start, columns, delay, metres, period):
     """Return the tags' ranges in [0, period), ascending within each pixel; delay has a row or (1, 1)."""

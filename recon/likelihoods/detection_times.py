@@ -2,21 +2,21 @@
 
 from __future__ import annotations
 
-import math
 from functools import cached_property
 from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike
 
-from recon.acquisition.pulses import GaussianPulse
 from recon.acquisition.time_tags import SPEED_OF_LIGHT, TimeTags
 from recon.errors import InputError
 from recon.likelihoods.contract import Interval, Likelihood
+from recon.likelihoods.detection_time_draws import draw_given_exposure, draw_given_number
 from recon.likelihoods.gaussian import Gaussian
 from recon.likelihoods.inputs import drawing_image
+from recon.likelihoods.live_exposure import live_exposure
 from recon.likelihoods.range_pulse import range_pulse
-from recon.validation import NONNEGATIVE, number_or_map
+from recon.validation import NONNEGATIVE, POSITIVE, number_or_map
 
 FLOOR = 1e-6  # least background over a period, in expected signal detections
 MOST = 1e12  # largest background over a period; beyond it a tag tells nothing
@@ -24,24 +24,36 @@ SHARE = 0.1  # of the background, counted as pulse where the pulse's log has no 
 
 
 class DetectionTimes(Likelihood):
-    """Half the deviance of the times of detections, given how many each pixel has; z is depth in m.
+    """Half the deviance of the times of detections; z is depth in m.
 
-        value(z) = sum over tags of  log(p(y - z^) + noise) - log(p(y - z) + noise)
+        value(z) = L(z) - L(z^)
+        L(z) = signal A(z) - sum over tags of log(p(y - z) + noise)
 
     with y the range from which an echo arrives at the tag's time, p the pulse as a periodic density of
     range (`RangePulse`), noise the background per metre for each expected signal detection, and z^ the
-    pixel's best depth. How many detections there are tells nothing about depth, so it is taken as given:
-    `draw` keeps it, and `fisher_information` is that of the tags there are.
+    pixel's best depth. A(z) is the number of periods in which the detector could have seen the pulse,
+    weighed by the pulse (`exposure_at`); dead time and gate are accounted for exactly (`LiveExposure`).
 
-    tags: the acquisition; a tag with an `interval` has the pulse averaged over it.
+    Without either, A is the number of trials at any depth, and how many detections there are tells
+    nothing about depth. Their number is then taken as given: `draw` keeps it, and `fisher_information` is
+    that of the tags there are. With either, the live exposure is taken as given: the tags of a draw are
+    Poisson with rate E(t) r(t), and `fisher_information` is that of tags so drawn.
+
+    tags: the acquisition; a tag with an `interval` has the pulse averaged over it, and one with a `dither`
+        is moved back by it.
     reflectivity: known, 0 or more, a map or a number. Where gain * reflectivity is 0, tags tell nothing.
     background: expected other detections per trial, a number or a map; None takes that of the tags.
 
     The background is taken to be at least a millionth of the signal. Not convex: `majorise` takes each
     tag as signal or background with the probabilities it has at z (Dempster, Laird and Rubin 1977) and
-    bounds minus the log of the pulse by a parabola, which for a Gaussian pulse it is.
+    bounds minus the log of the pulse by a parabola, which for a Gaussian pulse it is; A lies below the
+    parabola whose curvature is half the swing of E times the integral of |p''|.
 
     pulse: the `RangePulse`.
+    signal: (rows, columns), gain * reflectivity, expected signal detections per trial.
+    trials: (rows, columns).
+    live: the `LiveExposure`.
+    law: the pulse of the acquisition. metres: of range per second.
     y, start: (tags,) ranges in m, ascending within a pixel, those of pixel q at start[q] to start[q + 1].
     noise: (rows, columns), 1/m.
 
@@ -61,16 +73,22 @@ class DetectionTimes(Likelihood):
         self.shape = tags.shape
         self.pulse = range_pulse(tags)
         signal = np.broadcast_to(np.asarray(tags.gain, np.float64) * reflectivity, self.shape)
+        self.signal = np.ascontiguousarray(signal)
         used = (np.diff(tags.start) > 0).reshape(self.shape) & (signal > 0.0)
         self._used = used if tags.mask is None else used & tags.mask
         with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
             ratio = np.clip(background / signal, FLOOR, MOST)
         self.noise = np.where(signal > 0.0, ratio, MOST) / self.pulse.period
-        self._law = tags.pulse
-        self._metres = SPEED_OF_LIGHT / (2.0 * tags.refractive_index)  # per second
+        self.law = tags.pulse
+        self.metres = SPEED_OF_LIGHT / (2.0 * tags.refractive_index)  # per second
         self.start = tags.start
         delay = np.atleast_2d(np.asarray(tags.time_zero + tags.offset, np.float64))
-        self.y = kernels.ranges(tags.time, tags.start, self.shape[1], delay, self._metres, self.pulse.period)
+        period = self.pulse.period
+        time = tags.time if tags.dither is None else tags.time - tags.dither
+        self.y = kernels.ranges(time, tags.start, self.shape[1], delay, self.metres, period)
+        zero = np.mod(-self.metres * delay, period)
+        self.live = live_exposure(tags, self.y, np.where(zero < period, zero, 0.0), self.metres)
+        self.trials = self.live.trials
 
     @property
     def _tags(self) -> tuple[np.ndarray, ...]:
@@ -97,20 +115,34 @@ class DetectionTimes(Likelihood):
 
     @cached_property
     def _best(self) -> tuple[np.ndarray, np.ndarray]:
-        """The best depth of every pixel, and the sum over its tags of log(1 + p / noise) there."""
+        """The best depth of every pixel, and there sum of log(1 + p / noise) + signal (trials - A)."""
         from recon.likelihoods import detection_time_search
 
         pulse = self.pulse
         depth, excess = np.zeros(self.shape), np.zeros(self.shape)
-        detection_time_search.best(*self._tags, pulse.mode, pulse.core, *self._table, depth, excess)
+        detection_time_search.best(
+            *self._tags, self.signal, *self.live.edges, pulse.mode, pulse.core, pulse.low, pulse.step,
+            pulse.pieces, pulse.shares, pulse.period, depth, excess,
+        )  # fmt: skip
         return depth, excess
 
     @property
     def constant(self) -> float:
-        """Minus the log of the density (per s) of the times, given their number, at the best depths."""
+        """Minus the log of the density (per s) of the times at the best depths.
+
+        Given their number; where periods are lost, that of the Poisson process with the live exposure:
+        the integral of E r - sum over tags of log r.
+        """
         tags = np.where(self._used, np.diff(self.start).reshape(self.shape), 0)
-        each = np.log(self.noise / (1.0 + self.noise * self.pulse.period) * self._metres)
-        return -float(np.sum(self._best[1][self._used] + (tags * each)[self._used]))
+        ratio = self.noise * self.pulse.period
+        if self.live.is_whole:
+            each = np.log(self.noise / (1.0 + ratio) * self.metres)
+            return -float(np.sum(self._best[1][self._used] + (tags * each)[self._used]))
+        expected = self.signal * (self.trials + ratio * self.live.uniform)
+        with np.errstate(divide="ignore", invalid="ignore"):
+            each = np.log(self.signal * self.noise * self.metres)
+            total = expected - tags * each - self._best[1]
+        return float(np.sum(total[self._used]))
 
     def estimate(self) -> np.ndarray:
         """Return the depth that fits each pixel's tags best; the mean of the others without data."""
@@ -125,6 +157,8 @@ class DetectionTimes(Likelihood):
 
         excess = np.zeros(self.shape)
         kernels.excess(np.asarray(z, np.float64), *self._tags, *self._table, excess)
+        if not self.live.is_whole:
+            excess += self.signal * self.live.losses(z, self.pulse, self._used)[0]
         return self._best[1] - excess
 
     def _derivatives(self, z: np.ndarray, share: float = 0.0) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
@@ -132,6 +166,10 @@ class DetectionTimes(Likelihood):
 
         written = tuple(np.zeros(self.shape) for _ in range(3))
         kernels.derivatives(np.asarray(z, np.float64), *self._tags, share, *self._table, *written)
+        if not self.live.is_whole:
+            _, first, second = self.live.losses(z, self.pulse, self._used)
+            written[0][...] -= self.signal * first
+            written[1][...] -= self.signal * second
         return written
 
     def gradient(self, z: np.ndarray) -> np.ndarray:
@@ -147,18 +185,27 @@ class DetectionTimes(Likelihood):
         return self._derivatives(z)[2]
 
     def fisher_information(self, z: np.ndarray) -> np.ndarray:
-        """Return the expected curvature of the pixel's number of tags, if z is true.
+        """Return the expected curvature if z is true: of the pixel's number of tags, or its live exposure.
 
-        Exact tags tell as much at any depth; how much a coarse clock tells depends on its phase.
+        The latter is the integral of E(t) (S p')^2 / (S p + b / T). Where nothing is lost, exact tags tell
+        as much at any depth; how much a coarse clock tells depends on its phase.
         """
-        if self.pulse.interval == 0.0:
+        if self.pulse.interval == 0.0 and self.live.is_whole:
             return self._information.copy()
         from recon.likelihoods import detection_time_kernels as kernels
+        from recon.likelihoods import live_exposure_kernels
 
         # A fine clock is taken a quarter of the pulse's finest detail at a time.
-        stride = self.pulse.interval * max(1.0, 2.0 * self.pulse.step // self.pulse.interval)
-        out = np.zeros(self.shape)
-        kernels.coarse_information(np.asarray(z, np.float64), *self._tags, stride, *self._table, out)
+        interval = self.pulse.interval
+        stride = interval and interval * max(1.0, 2.0 * self.pulse.step // interval)
+        z, out = np.asarray(z, np.float64), np.zeros(self.shape)
+        if not self.live.is_whole:
+            live_exposure_kernels.information(
+                z, self.y, self.start, self.noise, self.signal, self.trials, self._used, stride,
+                *self.live.edges, *self._table, out,
+            )  # fmt: skip
+            return out
+        kernels.coarse_information(z, *self._tags, stride, *self._table, out)
         return out
 
     @cached_property
@@ -167,45 +214,54 @@ class DetectionTimes(Likelihood):
         tags = np.diff(self.start).reshape(self.shape)
         return np.where(self._used, tags * self.pulse.information(self.noise), 0.0)
 
+    def exposure_at(self, z: np.ndarray) -> np.ndarray:
+        """Return A(z), the integral of E(y) p(y - z) dy, in periods (float64 map), for all pixels.
+
+        Tags or not, masked or not: it is the exposure with which a pulse at z would have been counted.
+        """
+        return self.trials - self.live.losses(z, self.pulse)[0]
+
+    def gated(self, z: np.ndarray, reach: ArrayLike) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+        """Return what each pixel, masked or not, holds from range z - reach to z + reach.
+
+        reach: m, above 0, a number or a map; half a period is all there is.
+
+        Returns three maps: the number of tags (int64), the live exposure of the pulse, integral of
+        E(y) p(y - z) dy, and that of the background, integral of E(y) dy over the unambiguous range (both
+        float64, periods). Raises InputError.
+        """
+        reach = np.atleast_2d(np.asarray(number_or_map(reach, "reach", self.shape, POSITIVE), np.float64))
+        return self.live.gated(z, reach, self.y, self.start, self.pulse)
+
     def residuals(self, z: np.ndarray) -> np.ndarray:
         """See `Likelihood.residuals`."""
         sign = np.where(self._best[0] >= z, 1.0, -1.0)
         return sign * np.sqrt(2.0 * np.maximum(self.value_map(z), 0.0))
 
     def draw(self, z: np.ndarray, seed: int | np.random.Generator) -> DetectionTimes:
-        """Return the same likelihood on as many tags, drawn at z; a coarse clock keeps each tag's phase."""
+        """Return the same likelihood on as many tags, drawn at z; a coarse clock keeps its phases.
+
+        Where periods are lost, the recorded live exposure is kept, and the number of tags is drawn too.
+        """
         from recon.likelihoods import detection_time_kernels as kernels
 
-        rng = np.random.default_rng(seed)
-        tags, period = np.diff(self.start), self.pulse.period
-        noise = np.repeat(self.noise.ravel(), tags)
-        y = np.repeat(drawing_image(z, self.shape).ravel(), tags)
-        y += self._pulse_draws(y.size, rng)
-        is_noise = rng.random(y.size) * (1.0 + noise * period) >= 1.0
-        y[is_noise] = period * rng.random(int(is_noise.sum()))
-        if self.pulse.interval > 0.0:
-            y = self.y + self.pulse.interval * np.round((y - self.y) / self.pulse.interval)
+        draws = draw_given_number if self.live.is_whole else draw_given_exposure
+        tags, y = draws(self, drawing_image(z, self.shape), np.random.default_rng(seed))
         other = object.__new__(type(self))
         other.__dict__.update(self.__dict__)
         for name in ("_best", "_information"):
             other.__dict__.pop(name, None)
-        other.y = kernels.ranges(y, self.start, self.shape[1], np.zeros((1, 1)), 1.0, period)
+        other.start = np.concatenate([[0], np.cumsum(tags)])
+        other.y = kernels.ranges(y, other.start, self.shape[1], np.zeros((1, 1)), 1.0, self.pulse.period)
         return other
 
-    def _pulse_draws(self, size: int, rng: np.random.Generator) -> np.ndarray:
-        """Draw from the pulse, metres, before a clock's intervals."""
-        smooth = self.pulse.resolution * rng.standard_normal(size)
-        if isinstance(self._law, GaussianPulse):
-            return smooth
-        first, last = self._law.support
-        fine = np.linspace(first, last, 2 + math.ceil(4.0 * self._metres * (last - first) / self.pulse.step))
-        share = self._law.cumulative(fine)
-        return smooth + self._metres * np.interp(rng.uniform(share[0], share[-1], size), share, fine)
-
     def majorise(self, z: np.ndarray) -> Gaussian:
-        """Return the parabola that touches at z and lies above; no weight where no tag is near."""
+        """Return the parabola that touches at z and lies above; without losses, no weight where no tag is."""
         gradient, _, weight = self._derivatives(z, 0.0 if self.pulse.log_concave else SHARE)
         precision = weight * self._sharpest
+        if not self.live.is_whole:
+            swing = np.where(self._used, self.signal * self.live.swing, 0.0)
+            precision += 0.5 * self.pulse.turning * swing
         z = np.asarray(z, np.float64)
         with np.errstate(divide="ignore", invalid="ignore"):
             target = np.where(precision > 0.0, z - gradient / precision, z)

@@ -20,50 +20,67 @@ import numpy as np
 from numba import prange
 
 from recon.kernels import COMPILE, row
+from recon.likelihoods.frame_tally import FrameTally
+from recon.likelihoods.neyman import coefficients
+from recon.likelihoods.neyman_fast_estimate import fast_estimate
 from recon.likelihoods.neyman_kernels import pixel
 
 _CLOSE = 1e-6  # a Newton step this small leaves an error of about its square
 _STEPS = 64  # bounds the sweep of pixels so bright that optima are too narrow to tell apart
 
 
+def best_yield(dose: np.ndarray, usable: np.ndarray, seen: FrameTally) -> np.ndarray:
+    """Return the yield of greatest likelihood of each usable pixel (float64), zero in others.
+
+    dose: primaries per frame, (rows or 1, columns).
+    """
+    if len(dose) == 1 and dose.min() == dose.max():
+        eta = fast_estimate(float(dose[0, 0]), usable, seen)
+    else:
+        eta = np.full(usable.shape, np.nan)
+    maximise(dose, usable, *seen.parts, coefficients(), eta)
+    eta[~usable] = 0.0
+    return eta
+
+
 @numba.njit(parallel=True, **COMPILE)
-def maximise(dose, usable, frames, start, count, times, table, eta, log_likelihood):
-    """Write the best eta of each usable pixel, and its log likelihood. Arguments: see `neyman_kernels`."""
+def maximise(dose, usable, start, count, times, kind, factor, empty, table, eta):
+    """Write the best eta of each usable pixel that is NaN. Arguments: see `neyman_kernels`."""
     for i in prange(eta.shape[0]):
         lam = row(dose, i)
         for j in range(eta.shape[1]):
-            if usable[i, j]:
-                data = (i * eta.shape[1] + j, lam[j], frames, start, count, times, table)
-                eta[i, j], log_likelihood[i, j] = _best(data)
+            if usable[i, j] and math.isnan(eta[i, j]):
+                p = i * eta.shape[1] + j
+                eta[i, j] = _best((p, lam[j], start, count, times, kind, factor, empty, table))
 
 
 @numba.njit(**COMPILE)
 def _best(data):
-    """Return the best eta of a pixel and its log likelihood."""
-    p, lam, frames, start, count, times, _ = data
-    electrons, hit = 0.0, 0.0
+    """Return the best eta of a pixel."""
+    p, lam, start, count, times, kind, factor, empty, _ = data
+    electrons, hit, total = 0.0, 0.0, empty[p]
     for pair in range(start[p], start[p + 1]):
         electrons += np.float64(count[pair]) * times[pair]
         hit += times[pair]
+        total += times[pair] * (factor[kind[pair]] if kind.size else 1.0)
     if electrons == 0.0:
-        return 0.0, 0.0
+        return 0.0
     # A frame with electrons had one primary or more; over all frames at most one for each electron left
-    # electrons, and at most lam a frame left none.
-    low = math.log(electrons / (electrons + lam * frames))
+    # electrons, and at most the dose left none.
+    low = math.log(electrons / (electrons + lam * total))
     high = math.log(electrons / hit)
-    middle = min(max(math.log(electrons / (lam * frames)), low), high)
+    middle = min(max(math.log(electrons / (lam * total)), low), high)
     first = _polish(low, middle, high, electrons, data)
     best = _sweep(first, high, first, electrons, data)
-    u, value = _sweep(first, low, best, electrons, data)
-    return math.exp(u), value
+    return math.exp(_sweep(first, low, best, electrons, data)[0])
 
 
 @numba.njit(**COMPILE)
 def _at(u, electrons, data):
     """Return the log likelihood, log(G / Y) and the derivative of that."""
-    p, lam, frames, start, count, times, table = data
+    p, lam, start, count, times, kind, factor, empty, table = data
     eta = math.exp(u)
-    value, mean, variance = pixel(p, lam, eta, frames, start, count, times, table)
+    value, mean, variance = pixel(p, lam, eta, start, count, times, kind, factor, empty, table)
     return value, math.log(eta * mean / electrons), 1.0 - eta * variance / mean
 
 

@@ -11,6 +11,8 @@ which is within 1e-7 (1e-9 where the span is a decade or less).
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
+from dataclasses import dataclass
 
 import numba
 import numpy as np
@@ -18,6 +20,7 @@ from numba import prange
 from numpy.polynomial.chebyshev import chebpts1, chebval2d, chebvander
 
 from recon.kernels import COMPILE
+from recon.likelihoods.frame_tally import dose_classes
 from recon.likelihoods.neyman import coefficients, law, posterior
 
 # Beyond these the share is, to 1e-9, what it is at them: it tends to 1 for small eta, and to limits
@@ -27,36 +30,90 @@ _DOSES = (1e-9, 1e9)
 _REACH = 9.5  # standard deviations or more on either side that the sum takes in
 
 
+@dataclass(frozen=True, eq=False)
+class LogAxis:
+    """Chebyshev points that span the logs of some values, and the polynomial through them.
+
+    nodes: the points; weights: turn a function at the nodes into the coefficients of the polynomial.
+    """
+
+    nodes: np.ndarray
+    weights: np.ndarray
+    limits: tuple[float, float]
+    middle: float
+    half: float
+
+    @classmethod
+    def spanning(cls, values: np.ndarray, limits: tuple[float, float]) -> LogAxis:
+        """Return the axis of all values, none taken to lie outside the limits."""
+        logs = np.log(np.clip([np.min(values), np.max(values)], *limits))
+        low, high = (float(end) for end in logs)
+        if low == high:
+            return cls(np.exp([low]), np.ones((1, 1)), limits, low, np.inf)
+        degree = 7 + math.ceil(5.0 * (high - low))
+        middle, half = 0.5 * (low + high), max(0.5 * (high - low), 1e-3)
+        points = chebpts1(degree + 1)
+        weights = chebvander(points, degree).T * (2.0 / points.size)
+        weights[0] *= 0.5
+        return cls(np.exp(middle + half * points), weights, limits, middle, half)
+
+    def place(self, values: np.ndarray) -> np.ndarray:
+        """Return where on [-1, 1] the values lie."""
+        return (np.log(np.clip(values, *self.limits)) - self.middle) / self.half
+
+    def vander(self, values: np.ndarray) -> np.ndarray:
+        """Return what the coefficients are multiplied by to give the polynomial at the values."""
+        return chebvander(self.place(values), self.nodes.size - 1)
+
+
+def line_classes(factors: np.ndarray) -> list[tuple[np.ndarray, np.ndarray]]:
+    """Return the factors of the dose (frames, rows) that each row meets, and how often it meets each."""
+    kind, factor = dose_classes(factors)
+    counted = (np.bincount(line, minlength=factor.size) for line in kind.T)
+    return [(factor[times > 0], times[times > 0]) for times in counted]
+
+
 def frame_information(eta: np.ndarray, dose: np.ndarray) -> np.ndarray:
     """Return J of every pixel (float64); inf where eta = 0.
 
     eta: (rows, columns), 0 or more; dose: primaries per frame, (rows or 1, columns).
     """
-    lam_nodes, lam_weights, lam_place = _axis(dose, _DOSES)
-    eta_nodes, eta_weights, eta_place = _axis(eta, _YIELDS)
-    shares = np.empty((lam_nodes.size, eta_nodes.size))
-    _sum_shares(lam_nodes, eta_nodes, coefficients(), shares)
-    polynomial = lam_weights @ shares @ eta_weights.T
-    share = np.empty(eta.shape)
-    for i in range(len(eta)):
-        share[i] = chebval2d(lam_place[i % len(dose)], eta_place[i], polynomial)
+    return stack_information(eta, dose, [(np.ones(1), np.ones(1))] * len(eta))
+
+
+def stack_information(
+    eta: np.ndarray,
+    dose: np.ndarray,
+    lines: list[tuple[np.ndarray, np.ndarray]],
+    shares: Callable[[np.ndarray, np.ndarray], np.ndarray] | None = None,
+) -> np.ndarray:
+    """Return the sum of J over the frames of every pixel (float64); inf where eta = 0.
+
+    eta: (rows, columns), 0 or more; dose: primaries per frame, (rows or 1, columns), for a factor of 1.
+    lines: factors of the dose and how often each row meets them, as `line_classes` returns them.
+    shares: J eta / lam of vectors (lam, eta), as a matrix; None = that of counted electrons.
+    """
+    factors = np.concatenate([factor for factor, _ in lines])
+    ends = np.array([dose.min() * factors.min(), dose.max() * factors.max()])
+    yields, doses = LogAxis.spanning(eta, _YIELDS), LogAxis.spanning(dose, _DOSES)
+    every = doses if factors.size == len(lines) and np.all(factors == 1.0) else LogAxis.spanning(ends, _DOSES)
+    share = (shares or counted_shares)(every.nodes, yields.nodes)
+    polynomial = every.weights @ share @ yields.weights.T
+    out = np.empty(eta.shape)
+    for i, (factor, times) in enumerate(lines):
+        # the sum over the row's frames, at the nodes of the dose
+        vander = every.vander(np.multiply.outer(doses.nodes, factor))
+        summed = doses.weights @ (np.einsum("nfk,f->nk", vander, times * factor) @ polynomial)
+        out[i] = chebval2d(doses.place(dose[i % len(dose)]), yields.place(eta[i]), summed)
     with np.errstate(divide="ignore"):
-        return share * dose / eta
+        return out * dose / eta
 
 
-def _axis(values: np.ndarray, limits: tuple[float, float]) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
-    """Return points that span the values, weights that turn a function there into the coefficients of a
-    polynomial, and where on [-1, 1] the values lie."""
-    logs = np.log(np.clip(values, *limits))
-    low, high = float(logs.min()), float(logs.max())
-    if low == high:
-        return np.exp(logs[:1, 0]), np.ones((1, 1)), np.zeros_like(logs)
-    degree = 7 + math.ceil(5.0 * (high - low))
-    middle, half = 0.5 * (low + high), max(0.5 * (high - low), 1e-3)
-    points = chebpts1(degree + 1)
-    weights = chebvander(points, degree).T * (2.0 / points.size)
-    weights[0] *= 0.5
-    return np.exp(middle + half * points), weights, (logs - middle) / half
+def counted_shares(lam: np.ndarray, eta: np.ndarray) -> np.ndarray:
+    """Return J eta / lam of counted electrons, (lam, eta)."""
+    out = np.empty((lam.size, eta.size))
+    _sum_shares(lam, eta, coefficients(), out)
+    return out
 
 
 @numba.njit(parallel=True, **COMPILE)

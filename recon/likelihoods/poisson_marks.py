@@ -13,8 +13,8 @@ from recon.likelihoods.contract import Interval, Likelihood
 from recon.likelihoods.frame_tally import FrameTally, tally
 from recon.likelihoods.inputs import drawing_image, pixelwise_bound
 from recon.likelihoods.neyman import coefficients
-from recon.likelihoods.neyman_estimate import maximise
-from recon.likelihoods.neyman_information import frame_information
+from recon.likelihoods.neyman_estimate import best_yield
+from recon.likelihoods.neyman_information import line_classes, stack_information
 from recon.likelihoods.poisson import Poisson
 from recon.validation import NONNEGATIVE, refuse
 
@@ -29,19 +29,24 @@ class PoissonMarks(Likelihood):
     the pixel's frames best. Not convex in eta.
 
     frames: the acquisition. What its counts say about each pixel is kept, not the counts: memory
-        and time do not grow with the number of frames. Masked pixels contribute zero.
+        and time do not grow with the number of frames. Masked pixels contribute zero. If its dose
+        differs from line to line, lam is that of the line: exact up to 64 different factors; where
+        there are more, a line with electrons takes the mean of a class half a per cent wide.
 
-    Raises InputError if a count is too large to be one of electrons.
+    Raises InputError if a count is too large to be one of electrons, or if the frames hold readings.
     """
 
     convex = False
 
     def __init__(self, frames: Frames) -> None:
+        if frames.law is not None:
+            raise InputError("frames hold analog readings, of law=MarkLaw(...); give them to AnalogMarks.")
         self.shape = frames.shape
         self._dose = frames.dose
         self._has_data = np.ones(self.shape, bool) if frames.mask is None else frames.mask.copy()
-        self._tally: FrameTally = tally(frames.counts, self._has_data)
-        self._electrons = self._tally.electrons().reshape(self.shape)
+        self._factors = None if frames.current is None else frames.factors
+        self._tally: FrameTally = tally(frames.counts, self._has_data, self._factors)
+        self._electrons = self._tally.electrons.reshape(self.shape)
 
     @property
     def has_data(self) -> np.ndarray:
@@ -61,7 +66,7 @@ class PoissonMarks(Likelihood):
     @property
     def constant(self) -> float:
         """See `Likelihood.constant`."""
-        return -float(np.sum(self._best[1]))
+        return -float(np.sum(self._best_value))
 
     def estimate(self) -> np.ndarray:
         """Return the yield of greatest likelihood; the mean of the others where there is no data.
@@ -69,7 +74,7 @@ class PoissonMarks(Likelihood):
         With many faint frames this is the time-resolved estimate, which tells a primary that gave many
         electrons from many that gave one each.
         """
-        image = self._best[0].astype(np.float32)
+        image = self._best.astype(np.float32)
         image[~self._has_data] = image[self._has_data].mean()
         return image
 
@@ -78,7 +83,7 @@ class PoissonMarks(Likelihood):
         eta = self._yields(x)
         out = np.zeros(self.shape)
         kernels.log_likelihood(eta, *self._data, out)
-        return np.where(self._has_data & (np.asarray(x) < 0.0), np.inf, self._best[1] - out)
+        return np.where(self._has_data & (np.asarray(x) < 0.0), np.inf, self._best_value - out)
 
     def gradient(self, x: np.ndarray) -> np.ndarray:
         """Return the expected primaries, given the electrons, less electrons / eta."""
@@ -91,13 +96,13 @@ class PoissonMarks(Likelihood):
         return self._electrons_over(eta * eta) - self._primaries(eta)[1]
 
     def fisher_information(self, x: np.ndarray) -> np.ndarray:
-        """Return the number of frames times the Fisher information of one (see `neyman_information`)."""
+        """Return the Fisher information of all frames, one by one (see `neyman_information`)."""
         eta = self._yields(x)
         shown = self._has_data & np.isfinite(eta)
         out = np.where(self._has_data, np.nan, 0.0)
         if shown.any():
             inside = np.where(shown, eta, eta[shown].min())
-            out[shown] = self._tally.frames * frame_information(inside, self._lam)[shown]
+            out[shown] = stack_information(inside, self._lam, self._lines)[shown]
         return out
 
     def residuals(self, x: np.ndarray) -> np.ndarray:
@@ -112,10 +117,11 @@ class PoissonMarks(Likelihood):
         eta = np.where(self._has_data, eta, 0.0)
         rng = np.random.default_rng(seed)
         frames = []
-        for _ in range(self._tally.frames):
-            electrons = rng.poisson(rng.poisson(self._dose, self.shape) * eta)
+        for f in range(self._tally.frames):
+            dose = self._dose if self._factors is None else self._dose * self._factors[f][:, None]
+            electrons = rng.poisson(rng.poisson(dose, self.shape) * eta)
             frames.append(electrons.astype(np.min_scalar_type(electrons.max())))
-        return PoissonMarks(Frames(np.stack(frames), self._dose, self._has_data))
+        return PoissonMarks(Frames(np.stack(frames), self._dose, self._has_data, current=self._factors))
 
     def majorise(self, x: np.ndarray) -> Poisson:
         """Return the Poisson likelihood of the electrons, with the primaries expected at x for exposure.
@@ -152,15 +158,26 @@ class PoissonMarks(Likelihood):
     @property
     def _data(self) -> tuple:
         """What the kernels take after the image."""
-        seen = self._tally
-        return self._lam, self._has_data, seen.frames, seen.start, seen.count, seen.times, coefficients()
+        return self._lam, self._has_data, *self._tally.parts, coefficients()
 
     @cached_property
-    def _best(self) -> tuple[np.ndarray, np.ndarray]:
-        """The yield of greatest likelihood and its log likelihood; zeros where there is no data."""
-        eta, log_likelihood = np.zeros(self.shape), np.zeros(self.shape)
-        maximise(*self._data, eta, log_likelihood)
-        return eta, log_likelihood
+    def _lines(self) -> list[tuple[np.ndarray, np.ndarray]]:
+        """The factors of the dose of every row and how often they occur."""
+        if self._factors is None:
+            return [(np.ones(1), np.full(1, float(self._tally.frames)))] * self.shape[0]
+        return line_classes(self._factors)
+
+    @cached_property
+    def _best(self) -> np.ndarray:
+        """The yield of greatest likelihood; zero where there is no data."""
+        return best_yield(self._lam, self._has_data, self._tally)
+
+    @cached_property
+    def _best_value(self) -> np.ndarray:
+        """The log likelihood at the best yield; zero where there is no data."""
+        out = np.zeros(self.shape)
+        kernels.log_likelihood(self._best, *self._data, out)
+        return out
 
     def _primaries(self, eta: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         """Return the mean and the variance of the primaries given the electrons, zero without data."""

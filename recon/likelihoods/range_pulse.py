@@ -19,6 +19,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from functools import cached_property
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -77,6 +78,41 @@ class RangePulse:
         for power in range(5, -1, -1):
             logarithm = logarithm * v + self.pieces[cell, power]
         return np.exp(np.where(v <= 1.0, logarithm, -np.inf))
+
+    def cumulative(self, u: np.ndarray) -> np.ndarray:
+        """Return the integral of p from `low` to any u (m); a period further on it is 1 more."""
+        u = np.asarray(u, np.float64)
+        turns = np.floor((u - self.low) / self.period)
+        x = (u - self.low - self.period * turns) / self.step
+        cell = np.minimum(x.astype(np.intp), len(self.shares) - 1)
+        v = np.minimum(x - cell, 1.0)
+        share = np.zeros_like(x)
+        for power in range(5, -1, -1):
+            share = share * v + self.shares[cell, power]
+        return turns + share
+
+    @cached_property
+    def shares(self) -> np.ndarray:
+        """The integral of p from `low`, as `pieces` gives log p; Gauss-Legendre from knot to knot."""
+        powers = np.arange(6)
+        nodes, weights = np.polynomial.legendre.leggauss(8)
+        logarithm = self.pieces @ (0.5 + 0.5 * nodes) ** powers[:, None]
+        share = np.concatenate([[0.0], np.cumsum(np.exp(logarithm) @ weights)])
+        p, slope = self._at_knots
+        return _pieces(np.array([share / share[-1], p, slope]), self.step)
+
+    @cached_property
+    def turning(self) -> float:
+        """An upper bound of the integral of |p''| over a period, 1/m^2."""
+        slope = self._at_knots[1]  # its largest values lie between knots, by less than a hundredth
+        return 1.01 * float(np.sum(np.abs(np.diff(slope, append=slope[0]))))
+
+    @property
+    def _at_knots(self) -> tuple[np.ndarray, np.ndarray]:
+        """p and p' at every knot, the last included."""
+        last = self.pieces[-1]
+        p = np.exp(np.append(self.pieces[:, 0], last.sum()))
+        return p, p * np.append(self.pieces[:, 1], np.arange(6) @ last) / self.step
 
     def information(self, noise: np.ndarray) -> np.ndarray:
         """Return the Fisher information on depth, 1/m^2, of an exact tag over background of density `noise`.

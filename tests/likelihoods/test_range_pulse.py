@@ -3,10 +3,11 @@
 import numpy as np
 import pytest
 from scipy import constants, stats
-from scipy.integrate import trapezoid
+from scipy.integrate import quad, trapezoid
 
 from recon.acquisition import GaussianPulse, SampledPulse, TimeTags
 from recon.errors import InputError
+from recon.likelihoods import detection_time_kernels as kernels
 from recon.likelihoods.range_pulse import range_pulse
 
 PERIOD = 100e-9
@@ -63,6 +64,40 @@ def test_periods_that_overlap_are_summed(pulse, interval):
     expected = sum(long.density(u + turn * short.period) for turn in range(-5, 6))
     np.testing.assert_allclose(short.density(u), expected, rtol=1e-4)
     np.testing.assert_allclose(short.density(u + short.period), short.density(u), rtol=1e-9)
+
+
+def test_the_share_of_a_gaussian_pulse_is_exact():
+    pulse, rms = table(GaussianPulse(0.27e-9)), metres(0.27e-9)
+    u = np.linspace(-9.0, 9.0, 1001) * rms
+    np.testing.assert_allclose(pulse.cumulative(u), stats.norm.cdf(u, scale=rms), rtol=0.0, atol=1e-9)
+    turns = np.array([[-3.0], [0.0], [2.0]])
+    expected = turns + stats.norm.cdf(u, scale=rms)
+    np.testing.assert_allclose(pulse.cumulative(u + turns * pulse.period), expected, atol=1e-9)
+
+
+@pytest.mark.parametrize(("pulse", "period"), [(GaussianPulse(1e-9), 6e-9), (TAILED, 6e-9), (TAILED, PERIOD)])
+@pytest.mark.parametrize("interval", [None, 2e-9])
+def test_the_share_is_the_integral_of_the_density(pulse, period, interval):
+    pulse = table(pulse, period, interval)
+    ends = np.random.default_rng(0).uniform(-1.5, 1.5, (10, 2)) * metres(6e-9)
+    for a, b in ends:
+        expected = quad(pulse.density, a, b, limit=1000, epsabs=1e-10, points=np.linspace(a, b, 40)[1:-1])[0]
+        assert np.diff(pulse.cumulative([a, b]))[0] == pytest.approx(expected, abs=1e-8)
+    assert np.diff(pulse.cumulative([0.3, 0.3 + pulse.period]))[0] == pytest.approx(1.0, abs=1e-12)
+
+
+def test_the_compiled_share_is_the_same():
+    pulse = table(TAILED, 6e-9)
+    u = np.linspace(-3.0, 3.0, 501) * pulse.period
+    each = [kernels.cumulative(x, pulse.low, pulse.step, pulse.shares, pulse.period) for x in u]
+    np.testing.assert_allclose(each, pulse.cumulative(u), rtol=0.0, atol=1e-12)
+
+
+def test_how_much_a_gaussian_turns():
+    """The integral of |p''| is four times the largest slope, at one rms."""
+    pulse, rms = table(GaussianPulse(0.27e-9)), metres(0.27e-9)
+    turning = 4.0 * stats.norm.pdf(1.0) / rms**2
+    assert turning <= pulse.turning <= 1.011 * turning
 
 
 @pytest.mark.parametrize("pulse", [GaussianPulse(0.27e-9), TAILED])
