@@ -19,6 +19,7 @@ if TYPE_CHECKING:
         DeadTime,
         Frames,
         GaussianPulse,
+        MarkLaw,
         SampledPulse,
         TimeHistogram,
         TimeTags,
@@ -38,6 +39,7 @@ _HOMES = {
     "Frames": "acquisition",
     "GaussianPulse": "acquisition",
     "InputError": "errors",
+    "MarkLaw": "acquisition",
     "Problem": "problem",
     "SampledPulse": "acquisition",
     "Solution": "result",
@@ -52,9 +54,9 @@ _HOMES = {
 _MODULES = ("instrument", "likelihoods", "simulate", "testing")
 
 __all__ = [
-    "Counts", "DeadTime", "Diagnostics", "Frames", "GaussianPulse", "InputError", "Problem", "SampledPulse",
-    "Solution", "Status", "TimeHistogram", "TimeTags", "instrument", "likelihoods", "load", "reconstruct", "save",
-    "simulate", "solve", "testing",
+    "Counts", "DeadTime", "Diagnostics", "Frames", "GaussianPulse", "InputError", "MarkLaw", "Problem",
+    "SampledPulse", "Solution", "Status", "TimeHistogram", "TimeTags", "instrument", "likelihoods", "load",
+    "reconstruct", "save", "simulate", "solve", "testing",
 ]  # fmt: skip
 
 

@@ -38,8 +38,9 @@ class GuardedFile:
 
     def __init__(self, file: object, size: int) -> None:
         self._file = file
-        self._most = min(memory_limit(), max(ALWAYS_ALLOWED, DEFLATE_RATIO * size))
-        self._taken = 0
+        self._held = max(ALWAYS_ALLOWED, DEFLATE_RATIO * size)
+        self._memory = memory_limit()
+        self._declared = self._taken = 0
 
     def has(self, place: str) -> bool:
         """Whether there is an item at a place such as "entry/data/signal"."""
@@ -70,7 +71,20 @@ class GuardedFile:
             values = np.asarray(dataset[()])
             if values.dtype.kind == "b":
                 return values.view(np.uint8) != 0  # a stored boolean may be any byte
-            return values.astype(values.dtype.newbyteorder("="), copy=False)
+            return _native(values)
+
+    def rows(self, place: str, at_once: int) -> Iterator[tuple[slice, NDArray]]:
+        """A dataset (frames, rows, columns) of numbers by blocks of rows: (slice of the rows, block)."""
+        with _naming(place):
+            dataset = self._dataset(place, "iuf", rows=at_once)
+            if len(dataset.shape) != 3 or 0 in dataset.shape:
+                raise InputError(f"has shape {dataset.shape}; store (frames, rows, columns) there")
+        rows = dataset.shape[1]
+        for begin in range(0, rows, at_once):
+            block = slice(begin, min(begin + at_once, rows))
+            with _naming(place):
+                values = _native(dataset[:, block])
+            yield block, values
 
     def flag(self, place: str) -> bool:
         """A dataset that is 0 or 1."""
@@ -100,8 +114,11 @@ class GuardedFile:
             item = item[name]
         return item
 
-    def _dataset(self, place: str, kinds: str) -> object:
-        """A dataset that is safe to read, charged against the memory allowed for the file."""
+    def _dataset(self, place: str, kinds: str, rows: int | None = None) -> object:
+        """A dataset that is safe to read, charged against the memory allowed for the file.
+
+        rows: the entries of the second axis to be read at once; None = all.
+        """
         import h5py
 
         dataset = self._object(place)
@@ -118,16 +135,19 @@ class GuardedFile:
             if (code := creation.get_filter(index)[0]) not in FILTERS:
                 raise InputError(f"is compressed by filter {code}; repack it with gzip")
         logical = math.prod(dataset.shape) * dataset.dtype.itemsize
+        taken = logical if rows is None else logical * rows // max(1, *dataset.shape[1:2], rows)
         held = True
         if layout == h5py.h5d.CHUNKED:
             chunk = creation.get_chunk()
-            logical = max(logical, math.prod(chunk) * dataset.dtype.itemsize)
+            piece = math.prod(chunk) * dataset.dtype.itemsize
+            logical, taken = max(logical, piece), max(taken, piece)
             expected = math.prod(-(-n // c) for n, c in zip(dataset.shape, chunk, strict=True))
             held = dataset.id.get_num_chunks() == expected
         elif layout == h5py.h5d.CONTIGUOUS:
             held = dataset.id.get_storage_size() == logical
-        self._taken += logical
-        if self._taken > self._most:
+        self._declared += logical
+        self._taken += taken
+        if self._declared > self._held or self._taken > self._memory:
             raise InputError(
                 f"has shape {dataset.shape}, which is {logical} bytes and more than such a file can hold "
                 "or this machine can take; check the shape"
@@ -137,6 +157,10 @@ class GuardedFile:
                 f"has shape {dataset.shape} but not all of its values are stored; write them all"
             )
         return dataset
+
+
+def _native(values: NDArray) -> NDArray:
+    return values.astype(values.dtype.newbyteorder("="), copy=False)
 
 
 def _text(item: object, attribute: str) -> str:

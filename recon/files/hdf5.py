@@ -9,7 +9,9 @@
                               any, is the delay added. Tags do not say which period they belong to, so one
                               event_time_zero stands for all
       instrument/detector     NXdetector: the settings, and pixel_mask (0 = usable); dead_time (of the
-                              detector), electronics_dead_time and dead_time_reset (0 or 1), all or none
+                              detector), electronics_dead_time and dead_time_reset (0 or 1), all or none;
+                              for frames current, if any, and mark_law with gain, variance, offset, noise
+                              and ceiling if the counts are readings
       instrument/source       NXsource: period, and pulse_shape with rms, or with times and values
       truth                   NXcollection: the images a simulation started from
       note                    NXnote
@@ -27,6 +29,7 @@ from numpy.typing import ArrayLike, NDArray
 from recon.acquisition import Counts, Frames, TimeHistogram, TimeTags
 from recon.errors import InputError
 from recon.files.atomic import replacing
+from recon.files.frames import read_frames, write_frames
 from recon.files.guard import GuardedFile, opened
 from recon.files.nexus import NexusWriter
 from recon.files.ranging import (
@@ -53,9 +56,9 @@ SETTINGS = {  # by kind: name, group and units of what is stored as it stands
     "counts": RATES,
     "time_tags": RANGING | {"interval": (DETECTOR, "s"), "gate": (DETECTOR, "s")},
     "time_histogram": RANGING | {"bin_width": (DETECTOR, "s"), "first_edge": (DETECTOR, "s")},
-    "frames": {"dose": (DETECTOR, "1")},
+    "frames": {"dose": (DETECTOR, "1"), "current": (DETECTOR, "1")},
 }
-OPTIONAL = ("interval", "gate")
+OPTIONAL = ("interval", "gate", "current")
 
 
 def save(
@@ -109,12 +112,7 @@ def load(path: str | os.PathLike) -> Acquisition:
     declares more than it can hold, points outside itself, or describes an impossible acquisition.
     """
     with opened(path) as file:
-        version = file.text("entry", "acquisition_version")
-        if version != VERSION:
-            raise InputError(f"entry@acquisition_version is {version}; give a file of version {VERSION}.")
-        kind = file.text("entry", "acquisition")
-        if kind not in SETTINGS:
-            raise InputError(f"entry@acquisition is {kind}; give one of {', '.join(SETTINGS)}.")
+        kind = kind_of(file)
         settings = {
             name: file.array(f"{group}/{name}", units=units)
             for name, (group, units) in SETTINGS[kind].items()
@@ -123,6 +121,17 @@ def load(path: str | os.PathLike) -> Acquisition:
         if file.has(f"{DETECTOR}/pixel_mask"):
             settings["mask"] = np.asarray(file.array(f"{DETECTOR}/pixel_mask", kinds="iu") == 0)
         return _READERS[kind](file, settings)
+
+
+def kind_of(file: GuardedFile) -> str:
+    """The kind of the acquisition in a file, a key of SETTINGS. Raises InputError if it is another."""
+    version = file.text("entry", "acquisition_version")
+    if version != VERSION:
+        raise InputError(f"entry@acquisition_version is {version}; give a file of version {VERSION}.")
+    kind = file.text("entry", "acquisition")
+    if kind not in SETTINGS:
+        raise InputError(f"entry@acquisition is {kind}; give one of {', '.join(SETTINGS)}.")
+    return kind
 
 
 def load_truth(path: str | os.PathLike) -> dict[str, NDArray]:
@@ -149,25 +158,17 @@ def _read_counts(file: GuardedFile, settings: dict) -> Counts:
     return Counts(file.array("entry/data/detections"), several_per_trial=several_per_trial, **settings)
 
 
-def _write_frames(out: NexusWriter, frames: Frames) -> None:
-    out.data_group("entry/data", "counts", frames.counts, ("frame", "row", "column"))
-
-
-def _read_frames(file: GuardedFile, settings: dict) -> Frames:
-    return Frames(file.array("entry/data/counts"), **settings)
-
-
 _WRITERS = {
     "counts": _write_counts,
     "time_tags": write_time_tags,
     "time_histogram": write_time_histogram,
-    "frames": _write_frames,
+    "frames": write_frames,
 }
 _READERS = {
     "counts": _read_counts,
     "time_tags": read_time_tags,
     "time_histogram": read_time_histogram,
-    "frames": _read_frames,
+    "frames": read_frames,
 }
 
 

@@ -33,29 +33,45 @@ class NexusWriter:
         if place not in self._file:
             self._attributes(self._file.create_group(place), NX_class=nx_class, **attributes)
 
-    def dataset(self, place: str, values: ArrayLike, units: str | None = None) -> None:
-        """Store an array, compressed, or a scalar."""
+    def dataset(
+        self,
+        place: str,
+        values: ArrayLike,
+        units: str | None = None,
+        together: tuple[int, ...] | None = None,
+    ) -> None:
+        """Store an array, compressed, or a scalar.
+
+        together: the axes of an array from the one kept whole in a chunk first to the one split first;
+            None = from the last to the first.
+        """
         values = np.asarray(values)
-        stored = self._array(place, values) if values.ndim else self._scalar(place, values)
+        stored = self._array(place, values, together) if values.ndim else self._scalar(place, values)
         if units is not None:
             self._attributes(stored, units=units)
 
     def data_group(
-        self, place: str, signal: str, values: NDArray, axes: tuple[str, ...], **scales: NDArray
+        self,
+        place: str,
+        signal: str,
+        values: NDArray,
+        axes: tuple[str, ...],
+        together: tuple[int, ...] | None = None,
+        **scales: NDArray,
     ) -> None:
         """Store an NXdata group: the signal and one scale an axis, in s where given, else the index."""
         self.group(place, "NXdata", signal=signal, axes=axes)
-        self.dataset(f"{place}/{signal}", values)
+        self.dataset(f"{place}/{signal}", values, together=together)
         for axis, size in zip(axes, values.shape, strict=True):
             given = axis in scales
             scale = scales[axis] if given else np.arange(size, dtype=np.int32)
             self.dataset(f"{place}/{axis}", scale, units="s" if given else None)
 
-    def _array(self, place: str, values: NDArray) -> object:
-        chunk, items = [], CHUNK_BYTES // values.dtype.itemsize
-        for size in reversed(values.shape):
-            chunk.insert(0, max(1, min(size, items)))
-            items //= chunk[0]
+    def _array(self, place: str, values: NDArray, together: tuple[int, ...] | None) -> object:
+        chunk, items = [1] * values.ndim, CHUNK_BYTES // values.dtype.itemsize
+        for axis in together or reversed(range(values.ndim)):
+            chunk[axis] = max(1, min(values.shape[axis], items))
+            items //= chunk[axis]
         return self._file.create_dataset(
             place,
             data=values,

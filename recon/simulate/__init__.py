@@ -5,7 +5,8 @@ no formula is shared with the likelihoods.
 """
 
 from recon.simulate.beam import frames
+from recon.simulate.beam_faults import flicker
 from recon.simulate.counting import counts
 from recon.simulate.timing import time_tags
 
-__all__ = ["counts", "frames", "time_tags"]
+__all__ = ["counts", "flicker", "frames", "time_tags"]

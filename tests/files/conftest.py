@@ -5,7 +5,16 @@ import dataclasses
 import numpy as np
 import pytest
 
-from recon.acquisition import Counts, DeadTime, Frames, GaussianPulse, SampledPulse, TimeHistogram, TimeTags
+from recon.acquisition import (
+    Counts,
+    DeadTime,
+    Frames,
+    GaussianPulse,
+    MarkLaw,
+    SampledPulse,
+    TimeHistogram,
+    TimeTags,
+)
 
 SHAPE = (6, 5)
 
@@ -110,9 +119,26 @@ def _frames_maps(rng):
     return Frames(rng.integers(0, 500, (4, *SHAPE), dtype=np.int16), rng.random(SHAPE) + 0.1, _mask())
 
 
+def _frames_readings(rng):
+    law = MarkLaw(gain=10 / 3, variance=0.1, offset=-1 / 3, noise=0.7, ceiling=12.1)
+    stack = rng.normal(3.0, 6.0, (4, *SHAPE))
+    return Frames(stack, 0.1, _mask(), law=law, current=rng.random((4, 6)) + 0.5)
+
+
+def _frames_of_a_current(rng):
+    return Frames(rng.integers(0, 5, (4, *SHAPE), dtype=np.uint8), 0.1, current=[1, 2, 3, 4])
+
+
+def _frames_less_two(rng):
+    stack = rng.normal(3.0, 6.0, (6, *SHAPE))
+    stack[[0, 3]] = np.nan
+    with pytest.warns(UserWarning, match="frames 0, 3 of 6"):
+        return Frames(stack, 0.1, law=MarkLaw(noise=1.0), current=np.arange(1, 7) / 3)
+
+
 MAKERS = [
     _counts_plain, _counts_maps, _tags_plain, _tags_maps, _tags_clocked, _tags_none, _histogram_plain,
-    _histogram_maps, _frames_plain, _frames_maps,
+    _histogram_maps, _frames_plain, _frames_maps, _frames_readings, _frames_of_a_current, _frames_less_two,
 ]  # fmt: skip
 
 
@@ -150,6 +176,11 @@ def histogram():
 @pytest.fixture(scope="session")
 def frames():
     return _frames_maps(np.random.default_rng(7))
+
+
+@pytest.fixture(scope="session")
+def readings():
+    return _frames_readings(np.random.default_rng(7))
 
 
 def _identical(a, b):

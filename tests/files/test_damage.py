@@ -13,7 +13,7 @@ fuzz = settings(derandomize=True, deadline=None, database=None, max_examples=110
 DAMAGE = st.lists(st.tuples(st.floats(0, 1, exclude_max=True), st.integers(1, 255)), min_size=1, max_size=6)
 
 
-@pytest.fixture(scope="module", params=["counts", "clocked", "histogram", "frames"])
+@pytest.fixture(scope="module", params=["counts", "clocked", "histogram", "frames", "readings"])
 def saved(request, tmp_path_factory):
     """An acquisition, its file, and room for a damaged copy."""
     acquisition = request.getfixturevalue(request.param)

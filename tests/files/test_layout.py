@@ -1,5 +1,7 @@
 """The layout of an acquisition file is NeXus: groups, classes, signals, axes and units."""
 
+import dataclasses
+
 import h5py
 import numpy as np
 import pytest
@@ -46,6 +48,18 @@ def test_frames(frames, tmp_path):
     with h5py.File(tmp_path / "a.h5") as file:
         assert file["entry/data"].attrs["axes"].tolist() == [b"frame", b"row", b"column"]
         np.testing.assert_array_equal(file["entry/data/counts"], frames.counts)
+
+
+def test_readings(readings, tmp_path):
+    save(tmp_path / "a.h5", readings)
+    assert classes(tmp_path / "a.h5")["entry/instrument/detector/mark_law"] == "NXcollection"
+    with h5py.File(tmp_path / "a.h5") as file:
+        assert file["entry/data/counts"].dtype == np.float32
+        np.testing.assert_array_equal(file["entry/data/counts"], readings.counts)
+        detector = file["entry/instrument/detector"]
+        np.testing.assert_array_equal(detector["current"], readings.current)
+        stored = {name: float(value[()]) for name, value in detector["mark_law"].items()}
+        assert stored == dataclasses.asdict(readings.law)
 
 
 def test_time_tags(tags, tmp_path):
@@ -135,7 +149,7 @@ def test_a_file_without_events_is_read(tags, tmp_path, settings):
     assert load(tmp_path / "a.h5").counts().detections.sum() == 0
 
 
-@pytest.mark.parametrize("name", ["counts", "tags", "clocked", "nothing", "histogram", "frames"])
+@pytest.mark.parametrize("name", ["counts", "tags", "clocked", "nothing", "histogram", "frames", "readings"])
 def test_every_stored_byte_is_under_a_checksum(name, request, tmp_path):
     save(tmp_path / "a.h5", request.getfixturevalue(name))
     with h5py.File(tmp_path / "a.h5") as file:
