@@ -8,12 +8,13 @@ from dataclasses import dataclass
 import numpy as np
 
 from priors.contract import Block, Prior, Sum
+from priors.generalized_variation import GeneralizedVariation
 from priors.total_variation import TotalVariation
 from recon.errors import InputError
 from recon.likelihoods.contract import Likelihood
 
 # The engine reaches the priors through here alone.
-__all__ = ["Block", "Prior", "Problem", "Sum", "default_prior"]
+__all__ = ["Block", "Prior", "Problem", "Sum", "default_depth_prior", "default_prior"]
 
 
 @dataclass(frozen=True, init=False, eq=False)
@@ -63,6 +64,14 @@ class Problem:
 def default_prior() -> Prior:
     """Return the prior used where the user names none: isotropic total variation, weight to be chosen."""
     return TotalVariation()
+
+
+def default_depth_prior() -> Prior:
+    """Return the prior of depth where the user names none: generalized variation, weight to be chosen.
+
+    Surfaces slope; total variation would make stairs of them.
+    """
+    return GeneralizedVariation()
 
 
 def _flatten(priors: Prior | Sum | Iterable[Prior | Sum]) -> tuple[Prior, ...]:

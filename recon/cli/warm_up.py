@@ -15,11 +15,11 @@ from contextlib import contextmanager
 _LATER = """
 import numpy as np
 import recon
-from recon.imaging.evidence import pooled_depth
+from recon.imaging.depth import depth_belief
 flat = np.full((16, 16), 2.0)
 tags = recon.simulate.time_tags(flat, flat, 10, 1e-7, recon.GaussianPulse(3e-10), 0.05, 0.05, seed=0)
 times = recon.likelihoods.DetectionTimes(tags, flat.astype(np.float32))
-start = pooled_depth(tags, flat.astype(np.float32)).image
+start = depth_belief(times).depth
 times.value(start), times.fisher_information(start), times.majorise(start), times.signal_tags(start)
 frames = recon.simulate.frames(flat, 0.125, 30, seed=0)
 marks = recon.likelihoods.PoissonMarks(frames)

@@ -1,8 +1,9 @@
 """Depth from detection times, given the reflectivity.
 
-The steps, each of which can be called by itself: `pooled_depth` finds where the signal is,
-`open_settings` sets what a prior leaves open, `scene_bounds` says between which depths the scene lies, and
-`recon.solve` lowers the true objective, DetectionTimes + priors, from the first.
+The steps, each of which can be called by itself: `depth_belief` says how probable each depth of each pixel is,
+given all tags; its median is the start. `open_settings` sets what a prior leaves open, `scene_bounds` says
+between which depths the scene lies, and `recon.solve` lowers the true objective, DetectionTimes + priors,
+from the start: each step takes every tag as signal or background with the probabilities it has there.
 """
 
 from __future__ import annotations
@@ -13,31 +14,42 @@ import numpy as np
 
 from recon.acquisition import TimeTags
 from recon.errors import InputError
-from recon.imaging.evidence import PooledDepth, pooled_depth, pooled_from
+from recon.imaging.depth_belief import DepthBelief, depth_belief
 from recon.imaging.image import PhysicalImage
 from recon.imaging.task import Effort
 from recon.likelihoods.detection_times import DetectionTimes
-from recon.problem import Prior, Problem, Sum, default_prior
+from recon.problem import Prior, Problem, Sum, default_depth_prior
 from recon.solvers import solve
-from recon.uncertainty import local_uncertainty
 
-__all__ = ["DepthImage", "PooledDepth", "depth", "open_settings", "pooled_depth", "scene_bounds"]
+__all__ = ["DepthBelief", "DepthImage", "depth", "depth_belief", "open_settings", "scene_bounds"]
 
+TOLERANCE = 1e-3  # of depth, where the user gives none: closer solves change no pixel by a visible amount
 STEP = 2.0  # of the pulse's core: the step of depth at which an edge weighs half (measured)
-SLICE = 8.0  # of the pulse's core: thickness of the slices of `scene_bounds`
+MARGIN = 8.0  # of the pulse's core: room in front of and behind the scene
+SURFACE = 3.0  # of the pulse's core: depths closer than this are the same surface
+FAINTEST = 0.1  # of the mean reflectivity: the least that is taken for the reflectivity of a target
+DIMMEST = 0.05  # signal detections: the least that a target is taken to cause
 
 
 @dataclass(frozen=True, eq=False)
 class DepthImage(PhysicalImage):
     """A depth image (m), and how its pixels came by it.
 
-    start: the depth image that solving started from.
+    uncertainty is half the width of the central interval that holds 68 % of the depth's probability if there is a
+    target; it says nothing of a wrong surface, which `wrong_surface` does.
+
+    start: the depth image that solving started from, the median of the belief.
     signal_tags: float32, how many of a pixel's tags are expected to be signal. Where it is below a half,
-        the pixel counts as `filled`, and its uncertainty is that of a uniform law between the bounds.
+        the pixel counts as `filled`.
+    target: float32, the probability that there is a target at all.
+    wrong_surface: float32, the probability that a target is further than three cores of the pulse from the
+        image.
     """
 
-    start: PooledDepth
+    start: np.ndarray
     signal_tags: np.ndarray
+    target: np.ndarray
+    wrong_surface: np.ndarray
 
 
 def depth(
@@ -45,47 +57,58 @@ def depth(
     reflectivity: np.ndarray,
     prior: Prior | Sum | None = None,
     effort: Effort | None = None,
-    window: float | None = None,
 ) -> DepthImage:
-    """Return the depth image that lowers half the deviance of the tags + prior, from `pooled_depth` on.
+    """Return the depth image that lowers half the deviance of the tags + prior, from the belief's median on.
 
-    reflectivity: (rows, columns), known or estimated before.
-    prior: total variation if left out; what it leaves open, `open_settings` sets.
-    effort: how closely to solve, and whom to tell.
-    window: rms, in pixels, of the window of `pooled_depth`; chosen from the data if left out.
+    reflectivity: (rows, columns), known or estimated before. Where it is less than a tenth of its mean, or
+        than a twentieth of a detection, that is taken, so that tags can speak for a dark target and their
+        lack against any.
+    prior: generalized variation if left out; what it leaves open, `open_settings` sets.
+    effort: how closely to solve (to a gap of 1e-3 if left out), and whom to tell.
 
     Raises InputError.
     """
     effort = effort or Effort()
-    likelihood = DetectionTimes(tags, reflectivity)
-    start = pooled_from(likelihood, window)
-    terms = open_settings(default_prior() if prior is None else prior, likelihood, start.image)
+    likelihood = DetectionTimes(tags, np.maximum(reflectivity, faintest_target(tags, reflectivity)))
+    belief = depth_belief(likelihood)
+    start = belief.depth
+    terms = open_settings(default_depth_prior() if prior is None else prior, likelihood, start)
+    tolerance = TOLERANCE if effort.tolerance is None else effort.tolerance
     problem = Problem(likelihood, terms, scene_bounds(likelihood, start))
     told = effort.callback
     solution = solve(
         problem,
-        tolerance=effort.tolerance,
+        tolerance=tolerance,
         max_iterations=effort.max_iterations,
-        start=start.image,
+        start=start,
         callback=None if told is None else lambda state: told("depth", state),
     )
     signal = likelihood.signal_tags(solution.image).astype(np.float32)
-    filled = signal < 0.5
-    low, high = problem.bounds
-    uncertainty = local_uncertainty(likelihood, solution.image, problem.bounds)
-    uncertainty[filled] = (high - low) / np.sqrt(12.0)
+    reach = SURFACE * likelihood.pulse.core
+    near = belief.probability_within(solution.image - reach, solution.image + reach)
     return DepthImage(
         image=solution.image,
         unit="m",
-        uncertainty=uncertainty,
-        filled=filled,
+        uncertainty=0.5 * (belief.quantile(0.84) - belief.quantile(0.16)),
+        filled=signal < 0.5,
         priors=problem.priors,
         bounds=problem.bounds,
+        tolerance=tolerance,
         status=solution.status,
         diagnostics=solution.diagnostics,
         start=start,
         signal_tags=signal,
+        target=1.0 - belief.absent,
+        wrong_surface=1.0 - near,
     )
+
+
+def faintest_target(tags: TimeTags, reflectivity: np.ndarray) -> np.ndarray:
+    """Return the least reflectivity (rows, columns) that a target is taken to have."""
+    with np.errstate(divide="ignore"):
+        dimmest = DIMMEST / (np.asarray(tags.trials, np.float64) * tags.gain)
+    dimmest = np.where(np.isfinite(dimmest), dimmest, 0.0)
+    return np.broadcast_to(np.maximum(dimmest, FAINTEST * np.mean(reflectivity)), tags.shape)
 
 
 def open_settings(prior: Prior | Sum, likelihood: DetectionTimes, start: np.ndarray) -> list[Prior]:
@@ -120,14 +143,12 @@ def _settled(term: Prior, information: float, start: np.ndarray, core: float) ->
     return term.with_weight(term.typical_weight(information))
 
 
-def scene_bounds(likelihood: DetectionTimes, start: PooledDepth) -> tuple[float, float]:
-    """Return the depths between which the scene lies: slices of depth that hold as many pixels as a window.
+def scene_bounds(likelihood: DetectionTimes, start: np.ndarray) -> tuple[float, float]:
+    """Return the depths between which the scene lies: those of the start, and some room.
 
-    A stray depth of the start fills a window at most. Narrow bounds make for a sharp certificate: what a
-    pixel without data could gain is as large as they are wide.
+    Narrow bounds make for a sharp certificate: what a pixel without data could gain is as large as they
+    are wide.
     """
-    period, core = likelihood.pulse.period, likelihood.pulse.core
-    slices = max(1, int(period / (SLICE * core)))
-    counts, edges = np.histogram(start.image, slices, (0.0, period))
-    held = np.flatnonzero(counts >= min(2.0 * np.pi * start.window**2, counts.max()))
-    return float(edges[max(held[0] - 1, 0)]), float(edges[min(held[-1] + 2, slices)])
+    period, room = likelihood.pulse.period, MARGIN * likelihood.pulse.core
+    low, high = float(start.min()) - room, float(start.max()) + room
+    return max(low, 0.0), min(high, period)

@@ -21,6 +21,7 @@ class PhysicalImage:
     filled: boolean map, True where the pixel has no usable data and the prior alone fills it in.
     priors: the priors used, with their weights.
     bounds: the bounds used.
+    tolerance: the relative gap that was aimed at.
     status, diagnostics: how the solve ended.
     """
 
@@ -30,6 +31,7 @@ class PhysicalImage:
     filled: np.ndarray
     priors: tuple[Prior, ...]
     bounds: tuple[float, float]
+    tolerance: float
     status: Status
     diagnostics: Diagnostics
 

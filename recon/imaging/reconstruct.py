@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 
-from recon.acquisition import Counts, Frames, TimeTags
+from recon.acquisition import Counts, Frames, TimeHistogram, TimeTags
 from recon.errors import InputError
 from recon.imaging.image import Reconstruction
 from recon.imaging.task import Effort
@@ -13,23 +13,25 @@ from recon.solvers import State
 
 
 def reconstruct(
-    acquisition: Counts | TimeTags | Frames,
+    acquisition: Counts | TimeTags | TimeHistogram | Frames,
     prior: Prior | Sum | None = None,
     *,
     reflectivity_prior: Prior | Sum | None = None,
-    tolerance: float = 1e-4,
+    tolerance: float | None = None,
     max_iterations: int = 30_000,
     callback: Callable[[str, State], object] | None = None,
 ) -> Reconstruction:
     """Return the images that the acquisition allows, each with its uncertainty and its certificate.
 
-    Counts give `.reflectivity`; TimeTags give `.reflectivity` and `.depth`; Frames give `.electron_yield`.
+    Counts give `.reflectivity`; TimeTags and a TimeHistogram give `.reflectivity` and `.depth`; Frames give
+    `.electron_yield`.
 
-    prior: the prior of the image (of the depth image, for TimeTags), for example
-        priors.GeneralizedVariation(). Total variation if left out. A weight that is left out is
-        set by a rule of thumb from the data (`recon.weights`).
-    reflectivity_prior: the prior of the reflectivity image for TimeTags; total variation if left out.
-    tolerance, max_iterations: see `recon.solve`.
+    prior: the prior of the image (of the depth image, where there is one), for example
+        priors.GeneralizedVariation(). Total variation if left out, for depth generalized variation. A weight
+        that is left out is set by a rule of thumb from the data (`recon.weights`).
+    reflectivity_prior: the prior of the reflectivity image beside a depth image; total variation if left out.
+    tolerance: see `recon.solve`; 1e-4 if left out, for depth 1e-3.
+    max_iterations: see `recon.solve`.
     callback: called with the name of the image and the state, as solving goes on; True stops that image.
 
     Raises InputError for an argument that cannot be used.
@@ -40,8 +42,8 @@ def reconstruct(
                 f"{name} is a {type(given).__name__}; give a prior such as priors.TotalVariation(),"
                 " or leave it out."
             )
-    if reflectivity_prior is not None and not isinstance(acquisition, TimeTags):
-        raise InputError("reflectivity_prior is for TimeTags; for other acquisitions give prior.")
+    if reflectivity_prior is not None and not isinstance(acquisition, TimeTags | TimeHistogram):
+        raise InputError("reflectivity_prior is for TimeTags and TimeHistogram; for others give prior.")
     effort = Effort(tolerance, max_iterations, callback)
     if isinstance(acquisition, Counts):
         from recon.imaging.reflectivity import reflectivity
@@ -51,14 +53,14 @@ def reconstruct(
         from recon.imaging.electron_yield import electron_yield
 
         return Reconstruction(electron_yield=electron_yield(acquisition, prior, effort))
+    if isinstance(acquisition, TimeHistogram):
+        acquisition = acquisition.tags()
     if isinstance(acquisition, TimeTags):
-        from recon.imaging.depth import depth
-        from recon.imaging.reflectivity import reflectivity
+        from recon.imaging.ranging import ranging
 
-        brightness = reflectivity(acquisition.counts(), reflectivity_prior, effort)
-        return Reconstruction(
-            reflectivity=brightness, depth=depth(acquisition, brightness.image, prior, effort)
-        )
+        brightness, surface = ranging(acquisition, prior, reflectivity_prior, effort)
+        return Reconstruction(reflectivity=brightness, depth=surface)
     raise InputError(
-        f"acquisition is a {type(acquisition).__name__}; give recon.Counts, recon.TimeTags or recon.Frames."
+        f"acquisition is a {type(acquisition).__name__}; give recon.Counts, recon.TimeTags,"
+        " recon.TimeHistogram or recon.Frames."
     )

@@ -15,11 +15,15 @@ from recon.uncertainty import local_uncertainty
 from recon.weights import weigh
 
 
+TOLERANCE = 1e-4  # where the user gives none
+
+
 @dataclass(frozen=True)
 class Effort:
     """How closely to solve, and whom to tell; see `recon.solve`."""
 
-    tolerance: float = 1e-4
+    tolerance: float | None = None
+    """None = what is close enough for the kind of image."""
     max_iterations: int = 30_000
     callback: Callable[[str, State], object] | None = None
     """Called with the name of the image and the state."""
@@ -37,10 +41,11 @@ def image_of(
     terms = weigh(default_prior() if prior is None else prior, likelihood)
     problem = Problem(likelihood, terms)
     told = effort.callback
+    tolerance = TOLERANCE if effort.tolerance is None else effort.tolerance
     solution = solve(
         problem,
         solver="conic" if any(term.conic_only for term in terms) else None,
-        tolerance=effort.tolerance,
+        tolerance=tolerance,
         max_iterations=effort.max_iterations,
         start=start,
         callback=None if told is None else lambda state: told(name, state),
@@ -52,6 +57,7 @@ def image_of(
         filled=~likelihood.has_data,
         priors=problem.priors,
         bounds=problem.bounds,
+        tolerance=tolerance,
         status=solution.status,
         diagnostics=solution.diagnostics,
     )

@@ -3,7 +3,8 @@
 Ascents by Newton's rule with halved steps start at every tag, and at the peaks on a fine grid of places
 that two tags or more can see. A place is skipped where all tags that can see it, each at the pulse's
 peak, would not reach the best found so far. Tags are sorted, so an ascent looks only at those within the
-pulse's length. Where a pixel loses exposure, `detection_time_live_search` takes over.
+pulse's length. Where a pixel loses exposure, `detection_time_live_search` takes over, and where it has
+many tags, `detection_time_scan`.
 """
 
 from __future__ import annotations
@@ -17,6 +18,7 @@ from recon.kernels import COMPILE
 from recon.likelihoods.detection_time_ascent import FAINT, SPACING, ascend, climb, sums
 from recon.likelihoods.detection_time_kernels import density, locate
 from recon.likelihoods.detection_time_live_search import best_live
+from recon.likelihoods.detection_time_scan import MANY, best_scanned
 
 
 @numba.njit(parallel=True, **COMPILE)
@@ -38,9 +40,15 @@ def best(
                 if begin[q + 1] > begin[q]:
                     here = slice(begin[q], begin[q + 1])
                     live = (signal[i, j], edge[here], level[here], shares)
-                    z[i, j], top[i, j] = best_live(tags, mode, core, shape, live)
+                    if tags.size < MANY:
+                        z[i, j], top[i, j] = best_live(tags, mode, core, shape, live)
+                    else:
+                        z[i, j], top[i, j] = best_scanned(tags, mode, core, shape, live)
                 elif start[q + 1] > start[q]:
-                    z[i, j], top[i, j] = _best_of(tags, mode, core, shape)
+                    if tags.size < MANY:
+                        z[i, j], top[i, j] = _best_of(tags, mode, core, shape)
+                    else:
+                        z[i, j], top[i, j] = best_scanned(tags, mode, core, shape, None)
 
 
 @numba.njit(**COMPILE)

@@ -1,0 +1,26 @@
+"""Reflectivity and depth from time tags, each with the help of the other."""
+
+from __future__ import annotations
+
+from recon.acquisition import TimeTags
+from recon.imaging.depth import DepthImage, depth
+from recon.imaging.image import PhysicalImage
+from recon.imaging.reflectivity import gated_reflectivity, live_counts, reflectivity
+from recon.imaging.task import Effort
+from recon.problem import Prior, Sum
+
+
+def ranging(
+    tags: TimeTags,
+    depth_prior: Prior | Sum | None = None,
+    reflectivity_prior: Prior | Sum | None = None,
+    effort: Effort | None = None,
+) -> tuple[PhysicalImage, DepthImage]:
+    """Return the reflectivity and the depth image.
+
+    A first reflectivity comes from the number of tags alone; given it, `depth`; given that, the
+    reflectivity from the tags near the return.
+    """
+    first = reflectivity(live_counts(tags), reflectivity_prior, effort)
+    surface = depth(tags, first.image, depth_prior, effort)
+    return gated_reflectivity(tags, surface.image, reflectivity_prior, effort), surface
