@@ -149,8 +149,7 @@ def _reconstruct(commands: argparse._SubParsersAction, common: argparse.Argument
         "--tolerance",
         metavar="T",
         type=_real,
-        default=1e-4,
-        help="relative gap between objective and dual value to stop at, in (0, 1) (default: %(default)g)",
+        help="relative gap of objective and dual value to stop at, in (0, 1) (default: 1e-4, depth 1e-3)",
     )
     command.add_argument(
         "--max-iterations",
@@ -230,6 +229,31 @@ def _simulate_tags(command: argparse.ArgumentParser) -> None:
     )
     command.add_argument(
         "--interval", metavar="S", type=_real, help="step of the clock in s (default: exact times)"
+    )
+    command.add_argument(
+        "--dither", metavar="S", type=_real, help="known delays before the clock, from 0 to this many s"
+    )
+    command.add_argument(
+        "--jitter",
+        metavar="S",
+        type=_real,
+        default=0.0,
+        help="rms in s of a timing error that is not in the pulse declared (default: %(default)g)",
+    )
+    command.add_argument(
+        "--gate", metavar=("START", "STOP"), nargs=2, type=_real, help="when the detector records, s"
+    )
+    command.add_argument(
+        "--dead-time", metavar="S", type=_real, help="how long the detector is blind after a detection, in s"
+    )
+    command.add_argument(
+        "--electronics-dead-time",
+        metavar="S",
+        type=_real,
+        help="how long the electronics record nothing after a recorded detection, in s",
+    )
+    command.add_argument(
+        "--reset-every-period", action="store_true", help="blindness ends with the period at the latest"
     )
 
 

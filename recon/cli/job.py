@@ -17,7 +17,7 @@ from recon.cli.version import version
 from recon.files import load, load_note, load_truth
 from recon.files.json_text import json_text, write_json
 from recon.files.tiff import write_tiff
-from recon.imaging import Reconstruction, reconstruct
+from recon.imaging import DepthImage, Reconstruction, reconstruct
 from recon.report import words
 from recon.report.data_images import Acquisition, data_image, pixel_by_pixel
 from recon.report.figure import Picture, save_picture
@@ -29,7 +29,7 @@ class Settings:
     """How to reconstruct."""
 
     prior: Prior | None = None
-    tolerance: float = 1e-4
+    tolerance: float | None = None
     max_iterations: int = 30_000
 
 
@@ -84,7 +84,6 @@ class Job:
         record = {
             "version": version(),
             "converged": all(words.is_converged(image) for image in self.images.values()),
-            "tolerance": self.settings.tolerance,
             "acquisitions": self.acquisitions,
             "images": self.images,
         }
@@ -122,10 +121,11 @@ class Job:
             write_tiff(self.folder / files["image"], image.image, name, image.unit)
             uncertain = f"standard uncertainty of {name}"
             write_tiff(self.folder / files["uncertainty"], image.uncertainty, uncertain, image.unit)
-            tolerance = self.settings.tolerance
-            picture = Picture(
-                name, image, record, acquisition, data, alone[name], truth, tolerance, source.name
-            )
+            if isinstance(image, DepthImage):
+                for part, values in image.maps.items():
+                    files[part] = f"{name}_{part}.tif"
+                    write_tiff(self.folder / files[part], values, f"{words.spelled(part)} of {name}", "1")
+            picture = Picture(name, image, record, acquisition, data, alone[name], truth, source.name)
             save_picture(self.folder / files["picture"], picture)
         return records
 

@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING
 from rich.console import Console
 from rich.progress import BarColumn, Progress, SpinnerColumn, TextColumn, TimeElapsedColumn
 
+from recon.imaging import depth, task
 from recon.report.words import spelled
 
 if TYPE_CHECKING:
@@ -20,7 +21,7 @@ class SolveProgress:
     Nothing is shown where standard error is not a terminal.
     """
 
-    def __init__(self, tolerance: float, hidden: bool = False) -> None:
+    def __init__(self, tolerance: float | None = None, hidden: bool = False) -> None:
         console = Console(stderr=True)
         self._tolerance = tolerance
         self._first: dict[str, float] = {}
@@ -55,10 +56,11 @@ class SolveProgress:
             self._finish()
             self._first[name] = state.relative_gap
             self._tasks[name] = self._now = self._bars.add_task(spelled(name), total=1.0, gap="")
+        tolerance = self._tolerance or (depth.TOLERANCE if name == "depth" else task.TOLERANCE)
         self._bars.update(
             self._tasks[name],
-            completed=share_done(self._first[name], state.relative_gap, self._tolerance),
-            gap=f"gap {state.relative_gap:.1e} of {self._tolerance:.0e}, iteration {state.iteration}",
+            completed=share_done(self._first[name], state.relative_gap, tolerance),
+            gap=f"gap {state.relative_gap:.1e} of {tolerance:.0e}, iteration {state.iteration}",
         )
 
     def _finish(self) -> None:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from argparse import Namespace
 from pathlib import Path
 
+from recon.acquisition import TimeHistogram, TimeTags
 from recon.cli.job import Job, Settings, Source
 from recon.cli.output_folder import output_folder
 from recon.cli.prior_names import prior_named
@@ -12,8 +13,11 @@ from recon.cli.prior_names import prior_named
 
 def run(options: Namespace) -> int:
     """Reconstruct an acquisition file; return the exit code."""
-    settings = Settings(prior_named(options.prior, options.weight), options.tolerance, options.max_iterations)
     source = Source.read(Path(options.file))
+    prior = prior_named(
+        options.prior, options.weight, isinstance(source.acquisition, TimeTags | TimeHistogram)
+    )
+    settings = Settings(prior, options.tolerance, options.max_iterations)
     out = Path("fewcount-out", Path(options.file).stem) if options.out is None else Path(options.out)
     with output_folder(out) as folder:
         job = Job(folder, settings, options)

@@ -8,7 +8,7 @@ from collections.abc import Mapping
 
 import numpy as np
 
-from recon import GaussianPulse, simulate
+from recon import DeadTime, GaussianPulse, InputError, simulate
 from recon.files import save
 from recon.files.json_text import json_text
 from recon.files.known_image import load_known_image
@@ -64,9 +64,22 @@ def _tags(options: Namespace) -> Drawn:
         time_zero=options.time_zero,
         refractive_index=options.refractive_index,
         interval=options.interval,
+        dither=options.dither,
+        jitter=options.jitter,
+        gate=None if options.gate is None else tuple(options.gate),
+        dead_time=_dead_time(options),
         seed=options.seed,
     )
     return drawn, {"depth": depth, "reflectivity": reflectivity}
+
+
+def _dead_time(options: Namespace) -> DeadTime | None:
+    if options.dead_time is None and options.electronics_dead_time is None:
+        if options.reset_every_period:
+            raise InputError("--reset-every-period is about a dead time; give --dead-time, too.")
+        return None
+    detector, electronics = options.dead_time or 0.0, options.electronics_dead_time or 0.0
+    return DeadTime(detector, electronics, options.reset_every_period)
 
 
 def _frames(options: Namespace) -> Drawn:

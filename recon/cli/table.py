@@ -21,6 +21,7 @@ from recon.report.words import (
 Record = Mapping[str, Any]
 
 ALONE = "Uncertainty: standard, of a pixel by its own data alone."
+OF_DEPTH = ALONE[:-1] + "; of depth, with its neighbours', the surface being right."
 AGAINST_TRUTH = (
     " Errors: root mean square and median absolute, against the truth; conventional: of each pixel by itself."
 )
@@ -33,13 +34,18 @@ def print_summary(name: str, acquisition: Record, images: Mapping[str, Record]) 
     if acquisition["note"]:
         console.print(Text(acquisition["note"], style="dim"), soft_wrap=True)
     known = any(record["error"] is not None for record in images.values())
-    table = Table(caption=ALONE + AGAINST_TRUTH if known else ALONE, caption_justify="left")
+    note = OF_DEPTH if "depth" in images else ALONE
+    table = Table(caption=note + AGAINST_TRUTH if known else note, caption_justify="left")
     table.add_column("", no_wrap=True)
     for image in images:
         table.add_column(spelled(image), overflow="fold")
-    for label, cell in _ROWS + (_ERRORS if known else []):
+    rows = _ROWS + (_DEPTH if "depth" in images else []) + (_ERRORS if known else [])
+    for label, cell in rows:
         table.add_row(label, *(cell(record) for record in images.values()))
     console.print(table)
+    for record in images.values():
+        if "background" in record and record["background"]["verdict"]:
+            console.print(Text(f"Note: {record['background']['verdict']}.", style="bold"), soft_wrap=True)
     console.print()
 
 
@@ -59,6 +65,10 @@ def _error(record: Record, kind: str, of: str | None = None) -> str:
     return quantity(None if error is None else error[kind], record["unit"])
 
 
+def _share(record: Record, name: str) -> str:
+    return f"{100.0 * record[name]:.2g} % expected" if name in record else "-"
+
+
 _ROWS: list[tuple[str, Callable[[Record], Text | str]]] = [
     ("unit", lambda r: "none" if r["unit"] == "1" else r["unit"]),
     ("range", lambda r: f"{r['range'][0]:.3g} to {quantity(r['range'][1], r['unit'])}"),
@@ -69,6 +79,10 @@ _ROWS: list[tuple[str, Callable[[Record], Text | str]]] = [
     ("relative gap", lambda r: f"{r['relative_gap']:.2g}"),
     ("time", lambda r: f"{r['seconds']:.2f} s"),
     ("status", _status),
+]
+_DEPTH: list[tuple[str, Callable[[Record], Text | str]]] = [
+    ("without target", lambda r: _share(r, "without_target")),
+    ("on a wrong surface", lambda r: _share(r, "wrong_surface")),
 ]
 _ERRORS: list[tuple[str, Callable[[Record], Text | str]]] = [
     ("rmse", lambda r: _error(r, "rmse")),

@@ -1,9 +1,10 @@
 """Depth from detection times, given the reflectivity.
 
-The steps, each of which can be called by itself: `depth_belief` says how probable each depth of each pixel is,
-given all tags; its median is the start. `open_settings` sets what a prior leaves open, `scene_bounds` says
-between which depths the scene lies, and `recon.solve` lowers the true objective, DetectionTimes + priors,
-from the start: each step takes every tag as signal or background with the probabilities it has there.
+The steps, each of which can be called by itself: `depth_belief` says how probable each depth of each pixel
+is, given all tags; its median is the start. `open_settings` sets what a prior leaves open, `scene_bounds`
+says between which depths the scene lies, and `recon.solve` lowers the true objective, DetectionTimes +
+priors, from the start: each step takes every tag as signal or background with the probabilities it has
+there.
 """
 
 from __future__ import annotations
@@ -14,6 +15,7 @@ import numpy as np
 
 from recon.acquisition import TimeTags
 from recon.errors import InputError
+from recon.imaging.background_check import BackgroundCheck, background_check
 from recon.imaging.depth_belief import DepthBelief, depth_belief
 from recon.imaging.image import PhysicalImage
 from recon.imaging.task import Effort
@@ -35,8 +37,8 @@ DIMMEST = 0.05  # signal detections: the least that a target is taken to cause
 class DepthImage(PhysicalImage):
     """A depth image (m), and how its pixels came by it.
 
-    uncertainty is half the width of the central interval that holds 68 % of the depth's probability if there is a
-    target; it says nothing of a wrong surface, which `wrong_surface` does.
+    uncertainty is half the width of the central interval that holds 68 % of the depth's probability if
+    there is a target; it says nothing of a wrong surface, which `wrong_surface` does.
 
     start: the depth image that solving started from, the median of the belief.
     signal_tags: float32, how many of a pixel's tags are expected to be signal. Where it is below a half,
@@ -44,12 +46,21 @@ class DepthImage(PhysicalImage):
     target: float32, the probability that there is a target at all.
     wrong_surface: float32, the probability that a target is further than three cores of the pulse from the
         image.
+    background: whether the tags away from the surface are as many as the declared background says.
     """
 
     start: np.ndarray
     signal_tags: np.ndarray
     target: np.ndarray
     wrong_surface: np.ndarray
+    background: BackgroundCheck
+
+    @property
+    def maps(self) -> dict[str, np.ndarray]:
+        """What there is besides the image and its uncertainty, by name; shares and numbers, float32."""
+        return {
+            "signal_tags": self.signal_tags, "target": self.target, "wrong_surface": self.wrong_surface,
+        }  # fmt: skip
 
 
 def depth(
@@ -85,7 +96,7 @@ def depth(
     )
     signal = likelihood.signal_tags(solution.image).astype(np.float32)
     reach = SURFACE * likelihood.pulse.core
-    near = belief.probability_within(solution.image - reach, solution.image + reach)
+    wrong = 1.0 - belief.probability_within(solution.image - reach, solution.image + reach)
     return DepthImage(
         image=solution.image,
         unit="m",
@@ -99,7 +110,8 @@ def depth(
         start=start,
         signal_tags=signal,
         target=1.0 - belief.absent,
-        wrong_surface=1.0 - near,
+        wrong_surface=wrong,
+        background=background_check(likelihood, tags.background, solution.image, wrong),
     )
 
 

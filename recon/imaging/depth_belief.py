@@ -5,8 +5,8 @@ in pixels to weigh every surface through the line. The image is covered by two t
 that hang off them and columns with the rows that hang off them. Messages that have travelled count for a
 little less than they say, since what hangs off a tree's line is not independent of its neighbours' hangings.
 
-Depth is cut into bins, coarse ones first. Only the bins that are still likely are cut further, so that time and
-memory grow with pixels times the logarithm of the number of bins, and with the number of tags.
+Depth is cut into bins, coarse ones first. Only the bins that are still likely are cut further, so that time
+and memory grow with pixels times the logarithm of the number of bins, and with the number of tags.
 """
 
 from __future__ import annotations
@@ -75,9 +75,8 @@ class DepthBelief:
 def depth_belief(likelihood: DetectionTimes, lattice: DepthLattice | None = None) -> DepthBelief:
     """Return the belief in depth.
 
-    The likelihood of a pixel's depth bin is the mean over the bin of exp(-L), L as in `DetectionTimes`, and that
-    of no target is the likelihood that all tags are background, signal detections expected where
-    `likelihood.signal` says so.
+    The likelihood of a bin of depth is the mean over the bin of exp(-L), L as in `DetectionTimes`, and that
+    of no target is the likelihood that all tags are background where `likelihood.signal` expects others.
     """
     lattice = depth_lattice(likelihood) if lattice is None else lattice
     level = lattice.levels - 1
@@ -119,7 +118,8 @@ class _Evidence:
         phase = np.minimum((at - whole) * PHASES, PHASES - 1).astype(np.uint8)
         begin = (whole + np.int32(first)) % np.int32(self._bins)
         weight = trust(likelihood).ravel()
-        expected = (likelihood.signal * likelihood.trials).ravel().astype(np.float32) * weight
+        expected = np.where(likelihood.exposed, likelihood.signal * likelihood.trials, 0.0)
+        expected = expected.ravel().astype(np.float32) * weight
         live = likelihood.live
         level = live.level
         if not live.is_whole:
@@ -127,8 +127,8 @@ class _Evidence:
         half = math.ceil(max(abs(seen[0]), abs(seen[-1])) / self._width)
         taps = pulse.density(self._width * np.arange(-half, half + 1)) * self._width
         self._arguments = (
-            begin, phase, likelihood.start, kind.ravel(), weight, table, expected, live.edge, level, live.begin,
-            (taps / taps.sum()).astype(np.float32),
+            begin, phase, likelihood.start, kind.ravel(), weight, table, expected, live.edge, level,
+            live.begin, (taps / taps.sum()).astype(np.float32),
         )  # fmt: skip
 
     def on(self, level: int, first: np.ndarray, place: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
@@ -191,7 +191,7 @@ def _law(lattice: DepthLattice, level: int, core: float) -> np.ndarray:
 def _cut(
     first: np.ndarray, place: np.ndarray, probability: np.ndarray, size: int
 ) -> tuple[np.ndarray, np.ndarray]:
-    """Return the lists of the next finer level, of `size` bins: the parts of the bins that are still likely."""
+    """Return the lists of the next finer level, of `size` bins: what is still likely, in parts."""
     from recon.imaging import depth_belief_kernels as kernels
 
     keep = np.empty(place.size, np.bool_)

@@ -28,7 +28,8 @@ def evidence(
     edge, level, edges: (m; share of the trials lost; (pixels + 1,)), the live exposure; no edge = all of it.
     pulse: (taps,) float32, the pulse's masses on the finest bins, about its middle.
     shift: log2 of the finest bins in a bin of the list. width: m, of the finest.
-    first: see `DepthBelief`. bins: its place, and how many finest bins there are. likely: (entries,), absent: (pixels,) float32, both over the largest that is listed.
+    first: see `DepthBelief`. bins: its place, and how many finest bins there are. likely: (entries,),
+    absent: (pixels,) float32, both over the largest that is listed.
 
     likely = the mean over the bin of exp(sum over tags of trust log(1 + p / noise) + signal lost) and
     absent = exp(signal).

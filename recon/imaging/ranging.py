@@ -5,8 +5,8 @@ from __future__ import annotations
 from recon.acquisition import TimeTags
 from recon.imaging.depth import DepthImage, depth
 from recon.imaging.image import PhysicalImage
-from recon.imaging.reflectivity import gated_reflectivity, live_counts, reflectivity
-from recon.imaging.task import Effort
+from recon.imaging.reflectivity import counting_likelihood, gated_reflectivity, live_counts
+from recon.imaging.task import Effort, image_of
 from recon.problem import Prior, Sum
 
 
@@ -21,6 +21,8 @@ def ranging(
     A first reflectivity comes from the number of tags alone; given it, `depth`; given that, the
     reflectivity from the tags near the return.
     """
-    first = reflectivity(live_counts(tags), reflectivity_prior, effort)
+    effort = effort or Effort()
+    likelihood = counting_likelihood(live_counts(tags))
+    first = image_of("first_reflectivity", likelihood, reflectivity_prior, "1", effort)
     surface = depth(tags, first.image, depth_prior, effort)
     return gated_reflectivity(tags, surface.image, reflectivity_prior, effort), surface

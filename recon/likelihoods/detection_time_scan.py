@@ -27,7 +27,7 @@ NEAR, NEARER = 2.0, 0.02  # what a peak may be below the best, and what share of
 @numba.njit(**COMPILE)
 def best_scanned(tags, mode, core, shape, live):
     """Return the best range, in [0, period), and the maximum."""
-    noise, low, _, step, pieces, period = shape
+    _, low, _, step, pieces, period = shape
     nodes = math.ceil(period / min(SPACING * core, DETAIL * step))
     spacing = period / nodes
     score = _scores(tags, nodes, spacing, shape)

@@ -52,6 +52,7 @@ class DetectionTimes(Likelihood):
     pulse: the `RangePulse`.
     signal: (rows, columns), gain * reflectivity, expected signal detections per trial.
     trials: (rows, columns).
+    exposed: boolean map, False where a pixel is masked or cannot cause a signal.
     live: the `LiveExposure`.
     law: the pulse of the acquisition. metres: of range per second.
     y, start: (tags,) ranges in m, ascending within a pixel, those of pixel q at start[q] to start[q + 1].
@@ -74,8 +75,8 @@ class DetectionTimes(Likelihood):
         self.pulse = range_pulse(tags)
         signal = np.broadcast_to(np.asarray(tags.gain, np.float64) * reflectivity, self.shape)
         self.signal = np.ascontiguousarray(signal)
-        used = (np.diff(tags.start) > 0).reshape(self.shape) & (signal > 0.0)
-        self._used = used if tags.mask is None else used & tags.mask
+        self.exposed = signal > 0.0 if tags.mask is None else (signal > 0.0) & tags.mask
+        self._used = (np.diff(tags.start) > 0).reshape(self.shape) & self.exposed
         with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
             ratio = np.clip(background / signal, FLOOR, MOST)
         self.noise = np.where(signal > 0.0, ratio, MOST) / self.pulse.period

@@ -66,7 +66,6 @@ class Picture:
     data: DataImage
     conventional: np.ndarray
     truth: np.ndarray | None
-    tolerance: float
     source: str
 
 
@@ -108,7 +107,7 @@ def draw(picture: Picture) -> Figure:
         x, y = right + column * (width + BESIDE), BOTTOM + (1 - row) * (height + BETWEEN)
         if panel is None:
             axes = place(x + 0.3, y + 0.15, width - 0.15, height - 0.15)
-            draw_course(axes, picture.image.diagnostics.trace, picture.tolerance)
+            draw_course(axes, picture.image.diagnostics.trace, picture.image.tolerance)
         else:
             draw_panel(place(x, y, width, height), panel)
     for index, (text, style) in enumerate(head):
@@ -126,19 +125,24 @@ def main_panel(picture: Picture) -> Panel:
 def side_panels(picture: Picture) -> list[Panel | None]:
     """Return the small panels row by row; None stands for the trace of the solve."""
     look, limits, image = _look(picture), _limits(picture), picture.image
-    uncertainty = np.where(image.filled, np.nan, image.uncertainty)
+    # of depth the neighbours know something, too
+    uncertainty = image.uncertainty if _is_depth(image) else np.where(image.filled, np.nan, image.uncertainty)
     unit = "" if image.unit == "1" else f" ({image.unit})"
     values, label, whole = picture.data.values, picture.data.label, picture.data.whole
     data = Panel("Data", values, label, "magma", (0.0, spread(values)[1]), whole)
     alone = Panel("Conventional, pixel by pixel", picture.conventional, look.label, look.colours, limits)
     label = f"standard uncertainty{unit}"
-    unsure = Panel("Uncertainty of a pixel alone", uncertainty, label, "cividis", spread(uncertainty))
+    unsure = Panel("Standard uncertainty", uncertainty, label, "cividis", spread(uncertainty))
     if picture.truth is None:
         return [data, alone, unsure, None]
     truth = Panel("Truth", picture.truth, look.label, look.colours, limits)
     difference = image.image - np.asarray(picture.truth, np.float32)
     error = Panel("Reconstruction minus truth", difference, f"error{unit}", "RdBu_r", symmetric(difference))
     return [data, alone, truth, unsure, None, error]
+
+
+def _is_depth(image: PhysicalImage) -> bool:
+    return hasattr(image, "wrong_surface")
 
 
 def _look(picture: Picture) -> Look:
@@ -177,4 +181,6 @@ def _filled(picture: Picture) -> str:
     share = 100.0 * float(np.mean(picture.image.filled))
     if not share:
         return "data in every pixel"
+    if _is_depth(picture.image):
+        return f"filled in from the neighbours, without a signal tag of their own: {share:.2g} % of pixels"
     return f"grey: no usable data, filled in by the prior ({share:.2g} % of pixels)"

@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from recon.acquisition import Counts, Frames, TimeHistogram, TimeTags
+from recon.imaging import DepthImage
 from recon.report.data_images import detections
 
 if TYPE_CHECKING:
@@ -60,6 +61,7 @@ def image_record(
             "meaning": image.status.meaning,
             "remedy": image.status.remedy,
         },
+        "tolerance": image.tolerance,
         "solver": diagnostics.solver,
         "objective": diagnostics.objective,
         "dual_value": diagnostics.dual_value,
@@ -71,11 +73,30 @@ def image_record(
         "error": None,
         "trace": {name: list(values) for name, values in vars(diagnostics.trace).items()},
     }
+    if isinstance(image, DepthImage):
+        record |= _depth_record(image)
     if truth is not None:
         record["error"] = _error(image.image, truth)
         if conventional is not None:
             record["error"]["conventional"] = _error(conventional, truth)
     return record
+
+
+def _depth_record(image: DepthImage) -> dict[str, Any]:
+    """Return what a depth image says besides: shares of the pixels, and whether the background fits."""
+    background = image.background
+    return {
+        "without_target": float(np.mean(image.target < 0.5)),
+        "wrong_surface": float(np.mean(image.wrong_surface, dtype=np.float64)),
+        "signal_tags_per_pixel": float(np.mean(image.signal_tags, dtype=np.float64)),
+        "background": {
+            "declared": background.declared,
+            "found": background.found,
+            "standard_error": background.standard_error,
+            "fits": background.fits,
+            "verdict": background.words,
+        },
+    }
 
 
 def name_of(prior: Prior) -> str:

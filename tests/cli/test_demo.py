@@ -19,6 +19,7 @@ def test_the_demo_makes_every_image_and_beats_the_conventional_ones(run, tmp_pat
     folder = tmp_path / "shown"
     endings = (".png", ".tif", "_uncertainty.tif")
     expected = {f"{name}{ending}" for name in IMAGES for ending in endings} | {"diagnostics.json"}
+    expected |= {f"depth_{part}.tif" for part in ("signal_tags", "target", "wrong_surface")}
     assert {path.name for path in folder.iterdir()} == expected
 
     written = json.loads((folder / "diagnostics.json").read_text())

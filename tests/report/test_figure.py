@@ -19,7 +19,7 @@ def picture(counts, result, image, truth) -> Picture:
     alone = pixel_by_pixel(counts, result)["reflectivity"]
     record = image_record(image, truth, alone)
     return Picture(
-        "reflectivity", image, record, acquisition_record(counts), data_image(counts), alone, truth, 1e-4,
+        "reflectivity", image, record, acquisition_record(counts), data_image(counts), alone, truth,
         "square.h5",
     )  # fmt: skip
 
