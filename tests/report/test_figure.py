@@ -46,7 +46,7 @@ def test_the_image_and_the_truth_share_their_colours(picture, truth):
 
 
 def test_filled_pixels_have_no_uncertainty_to_show(picture):
-    uncertainty = next(panel for panel in images(picture) if panel.title.startswith("Uncertainty"))
+    uncertainty = next(panel for panel in images(picture) if panel.title == "Standard uncertainty")
     np.testing.assert_array_equal(np.isnan(uncertainty.values), picture.image.filled)
     assert picture.image.filled.any()
 
