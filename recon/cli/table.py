@@ -43,9 +43,9 @@ def print_summary(name: str, acquisition: Record, images: Mapping[str, Record]) 
     for label, cell in rows:
         table.add_row(label, *(cell(record) for record in images.values()))
     console.print(table)
-    for record in images.values():
-        if "background" in record and record["background"]["verdict"]:
-            console.print(Text(f"Note: {record['background']['verdict']}.", style="bold"), soft_wrap=True)
+    for image, record in images.items():
+        for note in record["notes"]:
+            console.print(Text(f"{spelled(image)}: {note.rstrip('.')}.", style="bold"), soft_wrap=True)
     console.print()
 
 

@@ -9,6 +9,7 @@ there.
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -97,6 +98,7 @@ def depth(
     signal = likelihood.signal_tags(solution.image).astype(np.float32)
     reach = SURFACE * likelihood.pulse.core
     wrong = 1.0 - belief.probability_within(solution.image - reach, solution.image + reach)
+    check = background_check(likelihood, tags.background, solution.image, wrong)
     return DepthImage(
         image=solution.image,
         unit="m",
@@ -105,14 +107,23 @@ def depth(
         priors=problem.priors,
         bounds=problem.bounds,
         tolerance=tolerance,
+        choice=None,
+        notes=tuple(_notes(tags, check)),
         status=solution.status,
         diagnostics=solution.diagnostics,
         start=start,
         signal_tags=signal,
         target=1.0 - belief.absent,
         wrong_surface=wrong,
-        background=background_check(likelihood, tags.background, solution.image, wrong),
+        background=check,
     )
+
+
+def _notes(tags: TimeTags, check: BackgroundCheck) -> Iterator[str]:
+    if not check.fits:
+        yield check.words
+    if tags.dead_time is not None and tags.dead_time.not_modelled:
+        yield tags.dead_time.not_modelled
 
 
 def faintest_target(tags: TimeTags, reflectivity: np.ndarray) -> np.ndarray:

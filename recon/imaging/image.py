@@ -9,6 +9,7 @@ import numpy as np
 
 from recon.diagnostics import Diagnostics, Status
 from recon.problem import Prior
+from recon.weights import Choice
 
 
 @dataclass(frozen=True, eq=False)
@@ -22,6 +23,8 @@ class PhysicalImage:
     priors: the priors used, with their weights.
     bounds: the bounds used.
     tolerance: the relative gap that was aimed at.
+    notes: sentences that a reader should know; often none.
+    choice: how the open weights were chosen by held-out data; None if they were not.
     status, diagnostics: how the solve ended.
     """
 
@@ -32,6 +35,8 @@ class PhysicalImage:
     priors: tuple[Prior, ...]
     bounds: tuple[float, float]
     tolerance: float
+    choice: Choice | None
+    notes: tuple[str, ...]
     status: Status
     diagnostics: Diagnostics
 

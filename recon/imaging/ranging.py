@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 from recon.acquisition import TimeTags
 from recon.imaging.depth import DepthImage, depth
 from recon.imaging.image import PhysicalImage
@@ -23,6 +25,7 @@ def ranging(
     """
     effort = effort or Effort()
     likelihood = counting_likelihood(live_counts(tags))
-    first = image_of("first_reflectivity", likelihood, reflectivity_prior, "1", effort)
+    rough = replace(effort, weight="rule")  # what it is for does not need the best weight
+    first = image_of("first_reflectivity", likelihood, reflectivity_prior, "1", rough)
     surface = depth(tags, first.image, depth_prior, effort)
     return gated_reflectivity(tags, surface.image, reflectivity_prior, effort), surface

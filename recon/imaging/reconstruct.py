@@ -10,6 +10,7 @@ from recon.imaging.image import Reconstruction
 from recon.imaging.task import Effort
 from recon.problem import Prior, Sum
 from recon.solvers import State
+from recon.weights import checked_rule
 
 
 def reconstruct(
@@ -20,6 +21,7 @@ def reconstruct(
     tolerance: float | None = None,
     max_iterations: int = 30_000,
     callback: Callable[[str, State], object] | None = None,
+    weight: str = "auto",
 ) -> Reconstruction:
     """Return the images that the acquisition allows, each with its uncertainty and its certificate.
 
@@ -28,10 +30,12 @@ def reconstruct(
 
     prior: the prior of the image (of the depth image, where there is one), for example
         priors.GeneralizedVariation(). Total variation if left out, for depth generalized variation. A weight
-        that is left out is set by a rule of thumb from the data (`recon.weights`).
+        that is left out is chosen from the data, see weight.
     reflectivity_prior: the prior of the reflectivity image beside a depth image; total variation if left out.
     tolerance: see `recon.solve`; 1e-4 if left out, for depth 1e-3.
     max_iterations: see `recon.solve`.
+    weight: how weights that the priors leave open are set: "auto" = the one that predicts held-out data best
+        (`recon.weights`; that of depth by the rule of thumb), "rule" = a rule of thumb for the data.
     callback: called with the name of the image and the state, as solving goes on; True stops that image.
 
     Raises InputError for an argument that cannot be used.
@@ -44,7 +48,7 @@ def reconstruct(
             )
     if reflectivity_prior is not None and not isinstance(acquisition, TimeTags | TimeHistogram):
         raise InputError("reflectivity_prior is for TimeTags and TimeHistogram; for others give prior.")
-    effort = Effort(tolerance, max_iterations, callback)
+    effort = Effort(tolerance, max_iterations, callback, checked_rule(weight))
     if isinstance(acquisition, Counts):
         from recon.imaging.reflectivity import reflectivity
 

@@ -12,8 +12,8 @@ from recon.likelihoods.contract import Likelihood
 from recon.problem import Prior, Problem, Sum, default_prior
 from recon.solvers import State, solve
 from recon.uncertainty import local_uncertainty
-from recon.weights import weigh
-
+from recon.weights import settle
+from recon.weights.settle import Pairs
 
 TOLERANCE = 1e-4  # where the user gives none
 
@@ -27,6 +27,8 @@ class Effort:
     max_iterations: int = 30_000
     callback: Callable[[str, State], object] | None = None
     """Called with the name of the image and the state."""
+    weight: str = "auto"
+    """How to set weights that a prior leaves open: "auto" by held-out data, "rule" by a rule of thumb."""
 
 
 def image_of(
@@ -36,10 +38,18 @@ def image_of(
     unit: str,
     effort: Effort,
     start: np.ndarray | None = None,
+    folds: Callable[[int, int], Pairs] | None = None,
+    notes: tuple[str, ...] = (),
 ) -> PhysicalImage:
-    """Return the image that minimises likelihood + prior within the likelihood's default bounds."""
-    terms = weigh(default_prior() if prior is None else prior, likelihood)
-    problem = Problem(likelihood, terms)
+    """Return the image that minimises likelihood + prior within the likelihood's default bounds.
+
+    folds: see `recon.weights.settle`. notes: see `PhysicalImage`.
+    """
+    bounds = likelihood.default_bounds
+    terms, choice = settle(
+        default_prior() if prior is None else prior, likelihood, bounds, effort.weight, folds
+    )
+    problem = Problem(likelihood, terms, bounds)
     told = effort.callback
     tolerance = TOLERANCE if effort.tolerance is None else effort.tolerance
     solution = solve(
@@ -58,6 +68,8 @@ def image_of(
         priors=problem.priors,
         bounds=problem.bounds,
         tolerance=tolerance,
+        choice=choice,
+        notes=notes + ((choice.note,) if choice is not None and choice.note else ()),
         status=solution.status,
         diagnostics=solution.diagnostics,
     )

@@ -15,7 +15,7 @@ from recon.likelihoods.mark_table import classify
 from recon.likelihoods.neyman import coefficients
 from recon.likelihoods.neyman_information import line_classes, stack_information
 from recon.likelihoods.poisson import Poisson
-from recon.validation import NONNEGATIVE, refuse
+from recon.validation import BLOCK, NONNEGATIVE, refuse
 
 _LEAST = 1e-8  # yields below it have its derivatives
 
@@ -117,11 +117,13 @@ class AnalogMarks(Likelihood):
         eta = np.where(self._has_data, eta, 0.0)
         rng, law = np.random.default_rng(seed), self._law
         frames = np.empty((self._frames, *self.shape), np.float32)
-        for f in range(self._frames):
-            dose = self._dose if self._factors is None else self._dose * self._factors[f][:, None]
-            electrons = rng.poisson(rng.poisson(dose, self.shape) * eta)
+        block = max(1, BLOCK // eta.size)
+        for begin in range(0, self._frames, block):
+            out = frames[begin : begin + block]
+            factors = 1.0 if self._factors is None else self._factors[begin : begin + block, :, None]
+            electrons = rng.poisson(rng.poisson(self._dose * factors, out.shape) * eta)
             spread = np.sqrt(law.variance * electrons + law.noise**2)
-            frames[f] = law.offset + law.gain * electrons + spread * rng.standard_normal(self.shape)
+            out[...] = law.offset + law.gain * electrons + spread * rng.standard_normal(out.shape)
         drawn = Frames(frames, self._dose, self._has_data, law=law, current=self._factors)
         return AnalogMarks(drawn)
 
@@ -137,7 +139,8 @@ class AnalogMarks(Likelihood):
         if bad.any():
             refuse("the image", np.asarray(x), bad, NONNEGATIVE.words)
         _, first, _, primaries = self._sums(eta)
-        electrons = np.maximum(eta * (first + primaries), 0.0)
+        electrons = eta * (first + primaries)
+        electrons[~(electrons > 0.01 * _LEAST * np.maximum(primaries, 1.0))] = 0.0  # less than rounding
         primaries = np.maximum(primaries, np.where(self._has_data, np.finfo(np.float32).tiny, 0.0))
         return Poisson.from_arrays(
             electrons.astype(np.float32), primaries.astype(np.float32), has_data=self._has_data

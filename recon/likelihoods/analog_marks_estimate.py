@@ -18,13 +18,13 @@ from recon.kernels import COMPILE, row
 from recon.likelihoods.analog_marks_kernels import pixel
 from recon.likelihoods.frame_tally import FrameTally
 from recon.likelihoods.mark_table import MarkTable
-from recon.likelihoods.mark_table_kernels import electrons, reading
+from recon.likelihoods.mark_table_kernels import electrons, weighted
 from recon.likelihoods.neyman import coefficients
 
 STEP = 0.125
 LEAST = 1e-8  # yields below it count as none
 _DOSE_STEP = 0.25
-_CLOSE = 1e-7
+_CLOSE = 1e-4  # a Newton step this small leaves an error of about its square
 _ROUNDS = 60
 
 
@@ -39,7 +39,7 @@ def best_yield(
     """
     gain, _, noise = marks.law
     saturated = np.isinf(marks.high)
-    largest = max(np.max(marks.low, where=~saturated, initial=0.0), 4.0 * np.max(marks.low[saturated], initial=0.0))
+    largest = np.max(np.where(saturated, 4.0, 1.0) * marks.low, initial=0.0)
     top = 1.0 + 2.0 * (largest + 4.0 * math.sqrt(noise)) / gain
     used = (mean_factor[:, None] * dose)[usable if len(dose) > 1 else usable.any(axis=1)]
     bottom = 0.1 / (seen.frames * float(used.max()) + 10.0)
@@ -58,13 +58,14 @@ def best_yield(
 
 @numba.njit(parallel=True, **COMPILE)
 def _tabulate(lam, eta, marks, most, table, logarithm):
-    """Write log P(class) for every dose, class and yield."""
+    """Write log P(class), less its peak, for every dose, class and yield."""
     for n in prange(lam.size * eta.size):
         i, k = n // eta.size, n % eta.size
         scratch = np.empty((4, most))
         number = electrons(lam[i], eta[k], table, scratch)
         for c in range(logarithm.shape[1]):
-            logarithm[i, c, k] = reading(c, lam[i], eta[k], number, scratch, marks, table)[0]
+            p = weighted(c, lam[i], eta[k], number, scratch, marks, table)[0]
+            logarithm[i, c, k] = math.log(max(p, 1e-300))  # roughly, where a yield is out of the question
 
 
 @numba.njit(parallel=True, **COMPILE)
@@ -89,7 +90,11 @@ def _search(
                 best = int(np.argmax(total))
                 left = nodes[best - 1] if best > 0 else 0.0
                 right = nodes[min(best + 1, nodes.size - 1)]
-                eta[i, j] = _climb(p, lam[j], left, nodes[best], right, seen, marks, table, scratch)
+                begin = nodes[best]
+                if 0 < best < nodes.size - 1:  # the top of the parabola through three nodes
+                    rise, bend = total[best + 1] - total[best - 1], total[best - 1] + total[best + 1]
+                    begin *= math.exp(-0.5 * STEP * rise / min(bend - 2.0 * total[best], -1e-300))
+                eta[i, j] = _climb(p, lam[j], left, begin, right, seen, marks, table, scratch)
 
 
 @numba.njit(**COMPILE)
@@ -113,9 +118,9 @@ def _climb(p, lam, left, eta, right, seen, marks, table, scratch):
             )  # fmt: skip
         change = abs(new - eta)
         eta, value, first, second, primaries = new, next_value, next_first, next_second, next_primaries
-        if change <= _CLOSE * eta:
+        if change <= (_CLOSE if newton else _CLOSE**2) * eta:
             break
-        if eta <= 2.0 * LEAST or (left == 0.0 and eta < 1e-2 * right and first < 0.0):
-            if pixel(p, lam, LEAST, seen, marks, table, scratch)[1] <= 0.0:
-                return 0.0
+        falls = eta <= 2.0 * LEAST or (left == 0.0 and eta < 1e-2 * right and first < 0.0)
+        if falls and pixel(p, lam, LEAST, seen, marks, table, scratch)[1] <= 0.0:
+            return 0.0
     return eta

@@ -16,7 +16,7 @@ import numpy as np
 from recon.acquisition.mark_law import MarkLaw
 from recon.kernels import COMPILE
 from recon.likelihoods.mark_table import class_width, mark_table
-from recon.likelihoods.mark_table_kernels import electrons, reading
+from recon.likelihoods.mark_table_kernels import RARE, electrons, weighted
 from recon.likelihoods.neyman import coefficients
 
 _FINE = 12.0  # classes to a standard deviation of the readings
@@ -57,7 +57,7 @@ def _share(lam, eta, marks, table, scratch):
     number = electrons(lam, eta, table, scratch)
     total = 0.0
     for c in range(marks[0].size):
-        log_p, score, _, _ = reading(c, lam, eta, number, scratch, marks, table)
-        if log_p > -50.0:
-            total += math.exp(log_p) * score * score
+        p, slope, _, _ = weighted(c, lam, eta, number, scratch, marks, table)
+        if p > RARE:
+            total += math.exp(marks[4][c]) * slope * slope / p
     return total * eta / lam

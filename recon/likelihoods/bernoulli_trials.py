@@ -11,7 +11,7 @@ from scipy.stats import binom
 from recon.acquisition.counts import Counts
 from recon.errors import InputError
 from recon.kernels import as_rows
-from recon.likelihoods.contract import Interval, Likelihood
+from recon.likelihoods.contract import LEAST_SHARED, Interval, Likelihood
 from recon.likelihoods.inputs import drawing_image, pixelwise_bound
 
 if TYPE_CHECKING:
@@ -19,6 +19,7 @@ if TYPE_CHECKING:
 
 _SMALLEST = 1e-300
 FAINT = 1e-2  # expected detections a trial
+_MOST_SHARED = 10**8  # trials; numpy's hypergeometric law takes few more
 
 
 class BernoulliTrials(Likelihood):
@@ -210,6 +211,49 @@ class BernoulliTrials(Likelihood):
                 k[late] = binom.ppf(u[late], self._most_trials, p[late])
                 n[late] = self._most_trials
             other._k, other._n = np.where(self._has_data, k, 0.0), np.where(self._has_data, n, 0.0)
+        other._settle(self._gain, self._background)
+        return other
+
+    def folds(self, number: int, seed: int) -> list[tuple[Likelihood, Likelihood]]:
+        """Return pairs that share out the trials: those of a pixel fall into `number` even parts.
+
+        Given how many trials and detections a pixel has, the detections of a part are hypergeometric. A
+        record that ends with a detection cannot be shared out: whole pixels are hidden then.
+        """
+        if self._stop_after is not None or self._n.max() > _MOST_SHARED:
+            return super().folds(number, seed)
+        rng = np.random.default_rng(seed)
+        n, k = self._n.astype(np.int64), self._k.astype(np.int64)
+        offset = rng.integers(number, size=self.shape)
+        pairs, trials, left = [], n, k
+        for f in range(number):
+            part = (n * (f + 1) + offset) // number - (n * f + offset) // number
+            found = rng.hypergeometric(left, trials - left, part)
+            trials, left = trials - part, left - found
+            pairs.append((self._with(k - found, n - part), self._with(found, part)))
+        return pairs
+
+    @property
+    def can_be_shared_out(self) -> bool:
+        """See `Likelihood.can_be_shared_out`."""
+        return float(self._count.sum(dtype=np.float64)) >= LEAST_SHARED
+
+    def score_map(self, x: np.ndarray) -> np.ndarray:
+        """Return the squared distance between k/n and its expectation, over that of gain, 0 without data.
+
+        With a rule that stops at a detection k/n is not unbiased: then it is `value_map`.
+        """
+        if self._stop_after is not None:
+            return self.value_map(x)
+        with np.errstate(divide="ignore", invalid="ignore"):
+            distance = (-np.expm1(-self._mu(x)) - self._k / self._n) / self._gain
+        return np.where(self._has_data, distance * distance, 0.0)
+
+    def _with(self, k: np.ndarray, n: np.ndarray) -> BernoulliTrials:
+        """Return the same likelihood on other numbers of detections and trials."""
+        other = object.__new__(type(self))
+        other.__dict__.update(self.__dict__)
+        other._k, other._n, other._has_data = k.astype(np.float64), n.astype(np.float64), n > 0
         other._settle(self._gain, self._background)
         return other
 

@@ -26,6 +26,9 @@ if TYPE_CHECKING:
     import cvxpy as cp
 
 
+LEAST_SHARED = 30  # detections, or pixels with data, below which nothing can be held out
+
+
 @dataclass(frozen=True)
 class Interval:
     """An interval of image values; an open end is a value the likelihood cannot take."""
@@ -101,6 +104,31 @@ class Likelihood(ABC):
     @abstractmethod
     def has_data(self) -> np.ndarray:
         """A boolean map, False where a pixel contributes nothing."""
+
+    def folds(self, number: int, seed: int) -> list[tuple[Likelihood, Likelihood]]:
+        """Return pairs of independent likelihoods of the same image, to fit one and score the other.
+
+        Every part of the data is scored in one of the `number` pairs. This default hides whole pixels, which
+        suits any likelihood; those whose data can be divided within a pixel do so, and lose less.
+        """
+        from recon.likelihoods.part import PixelPart
+
+        fold = np.random.default_rng(seed).integers(number, size=self.shape)
+        return [(PixelPart(self, fold != f), PixelPart(self, fold == f)) for f in range(number)]
+
+    @property
+    def can_be_shared_out(self) -> bool:
+        """Whether there are data enough that `folds` leaves each something to say."""
+        return int(np.count_nonzero(self.has_data)) >= LEAST_SHARED
+
+    def score_map(self, x: np.ndarray) -> np.ndarray:
+        """Return what an image is scored by that was fitted to other data, pixel by pixel (float64).
+
+        In expectation it is least, over all images, at the truth. This default is `value_map`, the
+        predictive log-likelihood; where there is an unbiased estimate of the image it is the squared
+        distance from that, which does not let the few detections of dark regions decide.
+        """
+        return self.value_map(x)
 
     # Convex likelihoods ------------------------------------------------------------------------
 

@@ -64,16 +64,29 @@ def dose_classes(factors: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
     return kind.astype(np.uint16), values
 
 
+def _tally_of_one(counts: np.ndarray, usable: np.ndarray) -> FrameTally:
+    """Return the tally of a single frame (rows, columns)."""
+    hit = usable & (counts > 0)
+    count = counts[hit].astype(np.uint16 if counts.max() <= np.iinfo(np.uint16).max else np.uint32)
+    start = np.concatenate([[0], np.cumsum(hit, dtype=np.int64)])
+    electrons = np.where(usable, counts, 0).astype(np.int64).ravel()
+    empty = np.where(hit, 0.0, 1.0).ravel()
+    nothing = np.empty(0, np.uint16)
+    return FrameTally(1, start, count, np.ones_like(count), nothing, np.ones(1), empty, electrons)
+
+
 def tally(counts: np.ndarray, usable: np.ndarray, factors: np.ndarray | None = None) -> FrameTally:
     """Return the tally of counts (frames, rows, columns), without pairs in pixels that are not usable.
 
     factors: (frames, rows), the dose of every line of every frame over that of its pixels; None = all 1.
 
-    Raises InputError if a count is above LARGEST.
+    Raises InputError if there are several frames and a count is above LARGEST.
     """
     from recon.likelihoods import neyman_tally_kernels as kernels
 
     largest = int(counts.max())
+    if len(counts) == 1 and factors is None:
+        return _tally_of_one(counts[0], usable)
     if largest > LARGEST:
         place = first(counts > LARGEST)
         raise InputError(

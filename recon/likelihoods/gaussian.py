@@ -146,6 +146,34 @@ class Gaussian(Likelihood):
             noise = np.where(self._has_data, noise / np.sqrt(self._precision), 0.0)
         return Gaussian.from_arrays(drawing_image(x, self.shape) + noise, self._precision, self._has_data)
 
+    def folds(self, number: int, seed: int) -> list[tuple[Likelihood, Likelihood]]:
+        """Return pairs that share out the precision: readings with independent errors (Tian et al. 2024).
+
+        Each of `number` parts is the reading plus noise of `number - 1` times its variance; the parts' noises
+        add up to none, so their mean is the reading.
+        """
+        rng = np.random.default_rng(seed)
+        with np.errstate(divide="ignore"):
+            rms = np.where(self._precision > 0.0, np.sqrt(number / self._precision), 0.0)
+        noise = rng.standard_normal((number, *self.shape))
+        noise = (noise - noise.mean(axis=0)) * rms
+        pairs = []
+        for part in self._target + noise:
+            rest = (number * self._target - part) / (number - 1)
+            share = 1.0 / number
+            pairs.append(
+                (
+                    Gaussian.from_arrays(rest, self._precision * (1.0 - share)),
+                    Gaussian.from_arrays(part, self._precision * share),
+                )
+            )
+        return pairs
+
+    def score_map(self, x: np.ndarray) -> np.ndarray:
+        """Return (x - reading)^2, 0 without data."""
+        distance = np.asarray(x, np.float64) - self._target
+        return np.where(self.has_data, distance * distance, 0.0)
+
     def prox(self, v: np.ndarray, step: float) -> np.ndarray:
         """Return (v + step precision target) / (1 + step precision)."""
         pull = step * self._precision.astype(np.float64)

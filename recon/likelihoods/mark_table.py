@@ -14,9 +14,9 @@ import numpy as np
 from recon.acquisition.mark_law import MarkLaw
 from recon.errors import InputError
 from recon.likelihoods.frame_tally import LARGEST
-from recon.validation import first
+from recon.validation import BLOCK, first
 
-_REACH = 75.0  # the exponent, twice, down to which probabilities are kept: exp(-37.5) = 5e-17
+_REACH = 100.0  # twice the exponent down to which probabilities are kept: exp(-50) = 2e-22
 
 
 def class_width(law: MarkLaw) -> float:
@@ -32,8 +32,8 @@ class MarkTable:
     low, high: (classes,), readings less the offset; high = inf: saturated.
     begin: (classes,) int64, the number of electrons of the first weight; start: (classes + 1,) int64,
         where the weights of a class start.
-    weight: P(class | N) exp(-peak[class]) for N from begin on. Those left out are below 1e-16, and in the
-        saturated class, after the last weight, 1.
+    weight: P(class | N) exp(-peak[class]) for N from begin on; those left out are below 1e-21. Of the
+        saturated class first P(class | N), then 1 - P(class | N), from N = 0 on; then they are 1 and 0.
     law: (3,) float64, gain, variance per electron, variance of the noise.
     """
 
@@ -53,7 +53,8 @@ class MarkTable:
     @property
     def most(self) -> int:
         """One more than the largest number of electrons with a weight."""
-        return int(np.max(self.begin + np.diff(self.start)))
+        number = np.diff(self.start) // np.where(np.isinf(self.high), 2, 1)
+        return int(np.max(self.begin + number))
 
 
 def mark_table(low: np.ndarray, high: np.ndarray, law: MarkLaw) -> MarkTable:
@@ -70,7 +71,9 @@ def mark_table(low: np.ndarray, high: np.ndarray, law: MarkLaw) -> MarkTable:
         ends.append((middle + sign * root) / gain**2)
     begin = np.maximum(np.floor(ends[0]), 0.0).astype(np.int64)
     last = np.maximum(np.ceil(ends[1]), begin + 1.0).astype(np.int64)
-    start = np.concatenate([[0], np.cumsum(last - begin + 1)])
+    begin[saturated] = 0
+    number = (last - begin + 1) * np.where(saturated, 2, 1)
+    start = np.concatenate([[0], np.cumsum(number)])
     peak, weight = np.empty(low.size), np.empty(start[-1])
     shape = np.array([gain, variance, noise])
     kernels.weigh(low, high, begin, start, shape, peak, weight)
@@ -95,13 +98,16 @@ def classify(readings: np.ndarray, law: MarkLaw) -> tuple[np.ndarray, MarkTable]
             "apart; give the law of these readings, or a ceiling at which they are saturated."
         )
     used = np.zeros(top - bottom + 2, bool)
-    for frame in readings:
-        used[_places(frame, law, width, bottom, used.size)] = True
+    block = max(1, BLOCK // readings[0].size)
+    begins = range(0, len(readings), block)
+    for begin in begins:
+        used[_places(readings[begin : begin + block], law, width, bottom, used.size)] = True
     code = np.cumsum(used)
     code = code.astype(np.uint16 if code[-1] <= np.iinfo(np.uint16).max else np.uint32)
     codes = np.empty(readings.shape, code.dtype)
-    for frame, out in zip(readings, codes, strict=True):
-        out[...] = code[_places(frame, law, width, bottom, used.size)]
+    for begin in begins:
+        some = slice(begin, begin + block)
+        codes[some] = code[_places(readings[some], law, width, bottom, used.size)]
     place = np.flatnonzero(used)
     low = (place + bottom - 0.5) * width
     high = np.minimum(low + width, law.ceiling - law.offset)
@@ -110,7 +116,7 @@ def classify(readings: np.ndarray, law: MarkLaw) -> tuple[np.ndarray, MarkTable]
     return codes, mark_table(low, high, law)
 
 
-def _places(frame: np.ndarray, law: MarkLaw, width: float, bottom: int, size: int) -> np.ndarray:
+def _places(readings: np.ndarray, law: MarkLaw, width: float, bottom: int, size: int) -> np.ndarray:
     """Return the place of the class of every reading in a row of all classes, the saturated one last."""
-    place = np.floor((frame.astype(np.float64) - law.offset) / width + 0.5).astype(np.int64) - bottom
-    return np.where(frame >= law.ceiling, size - 1, place)
+    place = np.floor((readings.astype(np.float64) - law.offset) / width + 0.5).astype(np.int64) - bottom
+    return np.where(readings >= law.ceiling, size - 1, place)

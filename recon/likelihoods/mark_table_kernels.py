@@ -13,8 +13,8 @@ from recon.likelihoods.neyman import law, posterior
 
 _ROOT_HALF = math.sqrt(0.5)
 _HALF_LOG_2PI = 0.5 * math.log(2.0 * math.pi)
-_RARE = 1e-13  # a sum over the weights below it may have lost terms that were left out
-_NONE = 1e-34  # probabilities of numbers of electrons below it end the list
+RARE = 1e-10  # a sum over the weights below it may have lost terms that were left out
+_NONE = 1e-26  # probabilities of numbers of electrons below it end the list
 
 
 @numba.njit(**COMPILE)
@@ -47,12 +47,16 @@ def _mills(a):
 def weigh(low, high, begin, start, shape, peak, weight):
     """Write the weights of every class, and their peaks (see `mark_table.MarkTable`)."""
     for c in prange(low.size):
+        if math.isinf(high[c]):  # as they are: both tails
+            size, peak[c] = (start[c + 1] - start[c]) // 2, 0.0
+            for n in range(size):
+                weight[start[c] + n] = math.exp(log_interval(low[c], np.inf, n, shape))
+                weight[start[c] + size + n] = math.exp(log_interval(-np.inf, low[c], n, shape))
+            continue
         top = -np.inf
         for w in range(start[c], start[c + 1]):
             weight[w] = log_interval(low[c], high[c], begin[c] + (w - start[c]), shape)
             top = max(top, weight[w])
-        if math.isinf(high[c]):
-            top = 0.0
         peak[c] = top
         for w in range(start[c], start[c + 1]):
             weight[w] = math.exp(weight[w] - top)
@@ -83,58 +87,63 @@ def electrons(lam, eta, table, out):
 
 
 @numba.njit(**COMPILE)
-def reading(c, lam, eta, number, given, marks, table):
-    """Return log P(class), its first and second derivative by eta over P, and E[M|class].
+def weighted(c, lam, eta, number, given, marks, table):
+    """Return the sums of P, P', P'' and P E[M|N] over the weights of a class, less its peak.
 
-    number, given: what `electrons` returned and wrote.
+    number, given: what `electrons` returned and wrote. Sums of P below RARE may lack terms.
     """
-    low, high, begin, start, peak, weight, shape = marks
+    _, high, begin, start, _, weight, _ = marks
+    if math.isinf(high[c]):
+        return _saturated(weight[start[c] : start[c + 1]], lam, eta, number, given, table)
     first = begin[c]
-    end = min(first + start[c + 1] - start[c], number)
+    last = first + start[c + 1] - start[c]
     p, d, s, m = 0.0, 0.0, 0.0, 0.0
     shift = start[c] - first
-    for n in range(first, end):
+    for n in range(first, min(last, number)):
         w = weight[n + shift]
         p += w * given[0, n]
         d += w * given[1, n]
         s += w * given[2, n]
         m += w * given[3, n]
-    if math.isinf(high[c]):
-        tail = _beyond(first + start[c + 1] - start[c], lam, eta, number, given, table)
-        p, d, s, m = p + tail[0], d + tail[1], s + tail[2], m + tail[3]
-    if p > _RARE:
-        return peak[c] + math.log(p), d / p, s / p, m / p
-    return _in_logs(low[c], high[c], lam, eta, shape, table)
+    return p, d, s, m
 
 
 @numba.njit(**COMPILE)
-def _beyond(first, lam, eta, number, given, table):
-    """Sums of P, P', P'' and P E[M|N] over N from first on."""
-    if first >= number and number < given.shape[1]:
-        return 0.0, 0.0, 0.0, 0.0
+def reading(c, lam, eta, number, given, marks, table):
+    """Return log P(class), its first and second derivative by eta over P, and E[M|class]."""
+    p, d, s, m = weighted(c, lam, eta, number, given, marks, table)
+    if p > RARE:
+        return marks[4][c] + math.log(p), d / p, s / p, m / p
+    return _in_logs(marks[0][c], marks[1][c], lam, eta, marks[6], table)
+
+
+@numba.njit(**COMPILE)
+def _saturated(weights, lam, eta, number, given, table):
+    """What `weighted` returns for the saturated class: what is left by the readings below the ceiling."""
+    size = weights.size // 2
     p, d, s, m = 1.0, 0.0, 0.0, lam
-    for n in range(first):
-        p -= given[0, n]
-        d -= given[1, n]
-        s -= given[2, n]
-        m -= given[3, n]
+    for n in range(min(size, number)):
+        w = weights[size + n]
+        p -= w * given[0, n]
+        d -= w * given[1, n]
+        s -= w * given[2, n]
+        m -= w * given[3, n]
     if p > 1e-5:
         return p, d, s, m
     # so little is left that the difference is rounding
     p, d, s, m = 0.0, 0.0, 0.0, 0.0
     terms = law(lam, eta)
-    n = first
+    n = 0
     while True:
         log_probability, mean, v = posterior(n, terms, table)
-        q = math.exp(log_probability)
-        score = n / eta - mean
+        q = math.exp(log_probability) * (weights[n] if n < size else 1.0)
         p += q
-        d += q * score
-        s += q * (score * score - n / (eta * eta) + v)
+        d += q * (n / eta - mean)
+        s += q * (n * (n - 1.0) / (eta * eta) - 2.0 * n * mean / eta + mean * mean + v)
         m += q * mean
-        if n > (1.0 + lam) * eta and not q > 1e-18 * p:
-            return p, d, s, m
         n += 1
+        if n >= size and n > (1.0 + lam) * eta and not q > 1e-18 * p:
+            return p, d, s, m
 
 
 @numba.njit(**COMPILE)

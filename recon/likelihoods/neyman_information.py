@@ -105,6 +105,7 @@ def stack_information(
         vander = every.vander(np.multiply.outer(doses.nodes, factor))
         summed = doses.weights @ (np.einsum("nfk,f->nk", vander, times * factor) @ polynomial)
         out[i] = chebval2d(doses.place(dose[i % len(dose)]), yields.place(eta[i]), summed)
+    np.maximum(out, 0.0, out=out)  # where saturated readings tell nothing, the polynomial is about 0
     with np.errstate(divide="ignore"):
         return out * dose / eta
 

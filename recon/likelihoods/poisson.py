@@ -9,7 +9,7 @@ from scipy.special import gammaln, xlogy
 
 from recon.acquisition.counts import Counts
 from recon.kernels import as_rows
-from recon.likelihoods.contract import Interval, Likelihood
+from recon.likelihoods.contract import LEAST_SHARED, Interval, Likelihood
 from recon.likelihoods.inputs import drawing_image, pixelwise_bound
 
 if TYPE_CHECKING:
@@ -131,6 +131,41 @@ class Poisson(Likelihood):
         mean = self._mean(drawing_image(x, self.shape))
         count = np.random.default_rng(seed).poisson(np.maximum(mean, 0.0))
         return Poisson.from_arrays(count, self._slope, self._offset, self._has_data)
+
+    def folds(self, number: int, seed: int) -> list[tuple[Likelihood, Likelihood]]:
+        """Return pairs that share out the detections: each falls into any of `number` parts alike.
+
+        The parts of a Poisson number are independent Poisson numbers, each with its share of the
+        exposure. A count that is not whole cannot be shared out; whole pixels are hidden then.
+        """
+        if np.any(self._count % 1.0):
+            return super().folds(number, seed)
+        rng, left = np.random.default_rng(seed), self._count.astype(np.int64)
+        pairs = []
+        for f in range(number):
+            part = rng.binomial(left, 1.0 / (number - f))
+            left = left - part
+            share = 1.0 / number
+            pairs.append(
+                (
+                    Poisson.from_arrays(
+                        self._count - part, self._slope * (1.0 - share), self._offset, self._has_data
+                    ),
+                    Poisson.from_arrays(part, self._slope * share, self._offset, self._has_data),
+                )
+            )
+        return pairs
+
+    @property
+    def can_be_shared_out(self) -> bool:
+        """See `Likelihood.can_be_shared_out`."""
+        return float(self._count.sum(dtype=np.float64)) >= LEAST_SHARED
+
+    def score_map(self, x: np.ndarray) -> np.ndarray:
+        """Return (x - (count / slope - offset))^2, 0 without data."""
+        with np.errstate(divide="ignore", invalid="ignore"):
+            distance = np.asarray(x, np.float64) - (self._count / self._slope - self._offset)
+        return np.where(self._has_data, distance * distance, 0.0)
 
     def prox(self, v: np.ndarray, step: float) -> np.ndarray:
         """Return the prox in closed form: the positive root of a quadratic in x + offset."""

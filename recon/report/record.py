@@ -61,6 +61,8 @@ def image_record(
             "meaning": image.status.meaning,
             "remedy": image.status.remedy,
         },
+        "notes": list(image.notes),
+        "weight": _choice_record(image),
         "tolerance": image.tolerance,
         "solver": diagnostics.solver,
         "objective": diagnostics.objective,
@@ -80,6 +82,22 @@ def image_record(
         if conventional is not None:
             record["error"]["conventional"] = _error(conventional, truth)
     return record
+
+
+def _choice_record(image: PhysicalImage) -> dict[str, Any] | None:
+    """Return how the weight was chosen, with the whole curve; None if no data were held out."""
+    choice = image.choice
+    if choice is None:
+        return None
+    return {
+        "factor_of_rule": choice.factor,
+        "second_order": choice.second_order,
+        "folds": choice.folds,
+        "at_edge": choice.at_edge,
+        "factors": choice.factors.tolist(),
+        "score": choice.score.tolist(),
+        "standard_error": choice.standard_error.tolist(),
+    }
 
 
 def _depth_record(image: DepthImage) -> dict[str, Any]:

@@ -86,7 +86,7 @@ def clocks() -> Iterator[Row]:
 def flat_target() -> Iterator[Row]:
     """Pixelwise error of a flat target over the Cramer-Rao bound at 20 signal detections, no prior."""
     for name, background in (("no background", 0.0), ("signal-to-background 1", 20.0), ("0.04", 500.0)):
-        ratios = []
+        ratios, lost = [], []
         for seed in SEEDS:
             depth = np.full((64, 64), 4.0 + 0.013 * seed)
             tags = recon.simulate.time_tags(
@@ -95,8 +95,12 @@ def flat_target() -> Iterator[Row]:
             )  # fmt: skip
             times = DetectionTimes(tags, 1.0)
             bound = np.sqrt(1.0 / np.mean(times.fisher_information(depth)))
-            ratios.append(float(np.sqrt(np.mean((times.estimate() - depth) ** 2)) / bound))
-        yield at_most(GROUP, f"flat target, {name}", float(np.median(ratios)), "x", 1.1, "rms over bound")
+            off = np.abs(times.estimate() - depth) / bound
+            near = off < 6.0  # beyond, background was taken for the target: no matter of the bound
+            ratios.append(float(np.sqrt(np.mean(off[near] ** 2))))
+            lost.append(100.0 * float(np.mean(~near)))
+        detail = f"rms over bound; {np.median(lost):.2g} % of pixels on background"
+        yield at_most(GROUP, f"flat target, {name}", float(np.median(ratios)), "x", 1.1, detail)
 
 
 def high_flux() -> Iterator[Row]:

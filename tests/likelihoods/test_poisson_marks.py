@@ -234,3 +234,93 @@ def test_refused_input():
     readings[1, 2, 0] = 2_000_000
     with pytest.raises(InputError, match=r"counts at \(1, 2, 0\) is 2000000"):
         PoissonMarks(Frames(readings, 0.5))
+
+
+def uneven(seed, factors, eta=None, dose=0.4, mask=None):
+    """Frames whose dose differs from line to line, factors (frames, rows); and the yields."""
+    rng = np.random.default_rng(seed)
+    eta = rng.uniform(0.5, 6.0, (factors.shape[1], 6)) if eta is None else eta
+    lam = dose * factors[:, :, None]
+    counts = rng.poisson(rng.poisson(np.broadcast_to(lam, (len(factors), *eta.shape))) * eta)
+    return Frames(counts, dose, mask, current=factors), eta
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+@pytest.mark.parametrize("dose", [0.4, "map"])
+def test_dose_of_every_line(seed, dose):
+    rng = np.random.default_rng(seed)
+    dose = rng.uniform(0.2, 1.0, (4, 6)) if dose == "map" else dose
+    factors = rng.choice([0.5, 0.75, 1.0, 2.0], (30, 4))
+    data, eta = uneven(seed, factors, dose=dose)
+    likelihood = PoissonMarks(data)
+    lam = dose * factors[:, :, None] * np.ones(eta.shape)
+    expected = -log_probability(data.counts, lam, eta).sum()
+    assert math.isclose(likelihood.value(eta) + likelihood.constant, expected, rel_tol=1e-11)
+    h = 1e-4 * eta
+    slope = (likelihood.value_map(eta + h) - likelihood.value_map(eta - h)) / (2.0 * h)
+    np.testing.assert_allclose(likelihood.gradient(eta), slope, rtol=1e-5, atol=1e-5)
+    bend = (likelihood.gradient(eta + h) - likelihood.gradient(eta - h)) / (2.0 * h)
+    np.testing.assert_allclose(likelihood.curvature(eta), bend, rtol=1e-5, atol=1e-5)
+    one_by_one = sum(
+        PoissonMarks(Frames(np.zeros((1, *eta.shape), int), lam[f])).fisher_information(eta)
+        for f in range(30)
+    )
+    np.testing.assert_allclose(likelihood.fisher_information(eta), one_by_one, rtol=1e-6)
+    for x in np.geomspace(0.05, 100.0, 200):
+        assert likelihood.value_map(np.full(eta.shape, x)).min() > -1e-9
+    assert np.all(np.abs(likelihood.value_map(likelihood.estimate())) < 1e-9)
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+def test_many_different_doses_are_put_into_close_classes(seed):
+    factors = np.random.default_rng(seed).uniform(0.4, 2.0, (200, 4))
+    data, eta = uneven(seed, factors)
+    exact = -log_probability(data.counts, 0.4 * factors[:, :, None] * np.ones(eta.shape), eta)
+    likelihood = PoissonMarks(data)
+    # half a per cent of the dose moves the log probability of a frame by half a per cent of a primary
+    value = likelihood.value(eta) + likelihood.constant
+    assert abs(value - exact.sum()) < 0.005 * math.sqrt(exact.size)
+    assert np.unique(likelihood._tally.kind).size < math.log(5.0) / 0.005 + 2
+
+
+def test_a_current_of_one_changes_nothing():
+    data, eta = example(3, frames=40)
+    same, plain = PoissonMarks(Frames(data.counts, data.dose, current=np.ones(40))), PoissonMarks(data)
+    for name in ("value_map", "gradient", "curvature", "fisher_information"):
+        got, want = getattr(same, name)(eta), getattr(plain, name)(eta)
+        np.testing.assert_allclose(got, want, rtol=1e-11, atol=1e-11)
+    np.testing.assert_array_equal(same.estimate(), plain.estimate())
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+def test_draws_follow_the_dose_of_every_line(seed):
+    factors = np.random.default_rng(seed).choice([0.25, 1.0, 3.0], (6, 70))
+    eta = np.random.default_rng(seed).uniform(0.5, 5.0, (70, 70))
+    drawn = PoissonMarks(uneven(seed, factors, eta)[0]).draw(eta, seed)
+    score, information = drawn.gradient(eta), drawn.fisher_information(eta)
+    for sample in (score / np.sqrt(information), score**2 / information - 1.0):
+        assert abs(sample.mean()) < 4.5 * sample.std() / math.sqrt(sample.size)
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+@pytest.mark.parametrize(("frames", "lam", "eta"), [(128, 0.125, 3.0), (300, 0.02, 8.0), (20, 1.0, 1.0)])
+def test_one_dose_and_a_map_of_doses_give_the_same_estimate(seed, frames, lam, eta):
+    # the yields of one dose are read off a table, those of a map are searched for one by one
+    image = np.full((20, 30), eta)
+    counts = simulate_frames(image, lam, frames, seed=seed).counts
+    doses = np.full(image.shape, lam)
+    doses[0, 0] *= 1.01
+    one, other = PoissonMarks(Frames(counts, lam)).estimate(), PoissonMarks(Frames(counts, doses)).estimate()
+    np.testing.assert_allclose(one.ravel()[1:], other.ravel()[1:], rtol=2e-6)
+
+
+@pytest.mark.parametrize("largest", [5, 62, 63, 200])
+@pytest.mark.parametrize("frames", [1, 2, 90, 260])
+def test_sums_do_not_depend_on_how_frames_are_tallied(largest, frames):
+    rng = np.random.default_rng(frames)
+    counts = rng.integers(0, largest + 1, (frames, 3, 4)) * (rng.random((frames, 3, 4)) < 0.3)
+    counts[0, 0, 0] = largest
+    eta = rng.uniform(1.0, 5.0, (3, 4))
+    likelihood = PoissonMarks(Frames(counts, 2.0))
+    expected = -log_probability(counts, 2.0, eta).sum()
+    assert math.isclose(likelihood.value(eta) + likelihood.constant, expected, rel_tol=1e-9)

@@ -1,0 +1,162 @@
+"""The weight that predicts held-out data best.
+
+The data are shared out into folds (`Likelihood.folds`). For each weight, every fold's image is fitted to the
+other folds, and its own part scores it (Stone 1974): by the squared distance from an unbiased estimate, which
+is the mean squared error but for a constant, or by the predictive log-likelihood where there is none
+(`Likelihood.score_map`). Weights are factors of the rule of thumb, which knows how the weight grows with the
+data, so a factor found on a share of the data holds for all of them.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, field, replace
+
+import numpy as np
+
+from recon.likelihoods.contract import Likelihood
+from recon.problem import Prior, Problem
+from recon.solvers import solve
+
+RATIO = 1.6  # of neighbouring factors on the path
+MOST = 12  # factors tried
+TOLERANCE = 1e-3  # of the fits: far closer than folds tell weights apart
+LIMIT = 4000  # iterations of a fit
+FLOOR = 1e-3  # of the mean of an image: what is scored where it is zero, lest one detection decide
+
+
+@dataclass(frozen=True, eq=False)
+class Fold:
+    """A likelihood to fit and one to score, of the same image.
+
+    terms: the priors of the fit at factor 1, those to be chosen at their rule of thumb. open: which are.
+    bounds: of the fit. start: image to start from, or None.
+    """
+
+    fit: Likelihood
+    score: Likelihood
+    terms: tuple[Prior, ...]
+    open: tuple[bool, ...]
+    bounds: tuple[float, float]
+    start: np.ndarray | None = None
+
+
+@dataclass(frozen=True, eq=False)
+class Choice:
+    """How the weight was chosen.
+
+    factor: of the rule of thumb. second_order: the one chosen, for a prior that has one, else None.
+    factors, score, standard_error: the curve, by rising factor: the held-out score (`Likelihood.score_map`,
+        summed over pixels and folds) less that of the best factor tried, and the standard error of that
+        difference (paired, over pixels).
+    folds: how many. at_edge: whether the best factor is the last one tried at either end.
+    note: what a reader should know, in a sentence; may be empty.
+    """
+
+    factor: float
+    second_order: float | None
+    factors: np.ndarray
+    score: np.ndarray
+    standard_error: np.ndarray
+    folds: int
+    at_edge: bool
+    note: str = ""
+
+
+@dataclass
+class _Path:
+    """Fits along the path, each started from the nearest one before."""
+
+    folds: Sequence[Fold]
+    callback: Callable[[float], object] | None
+    images: dict[float, list[np.ndarray]] = field(default_factory=dict)
+    scores: dict[float, list[np.ndarray]] = field(default_factory=dict)
+
+    def at(self, factor: float, second_order: float | None = None) -> float:
+        """Return the held-out score at a factor, fitting if that has not been done."""
+        key = factor if second_order is None else (factor, second_order)
+        if key not in self.scores:
+            if self.callback is not None:
+                self.callback(factor)
+            images = [self._fit(i, factor, second_order) for i in range(len(self.folds))]
+            if second_order is None:
+                self.images[factor] = images
+            self.scores[key] = [
+                fold.score.score_map(np.maximum(image, FLOOR * max(float(image.mean()), 0.0)))
+                for fold, image in zip(self.folds, images, strict=True)
+            ]
+        return sum(float(np.sum(part)) for part in self.scores[key])
+
+    def _fit(self, index: int, factor: float, second_order: float | None) -> np.ndarray:
+        fold = self.folds[index]
+        terms = at_factor(fold.terms, fold.open, factor, second_order)
+        start = fold.start
+        if self.images:
+            near = min(self.images, key=lambda other: abs(math.log(other / factor)))
+            start = self.images[near][index]
+        problem = Problem(fold.fit, terms, fold.bounds)
+        return solve(problem, tolerance=TOLERANCE, max_iterations=LIMIT, start=start).image
+
+    def difference(self, one: float, other: float) -> tuple[float, float]:
+        """Return the score at one factor less that at another, and its standard error."""
+        apart = [a - b for a, b in zip(self.scores[one], self.scores[other], strict=True)]
+        square = sum(float(np.sum((d - d.mean()) ** 2)) for d in apart)
+        return sum(float(d.sum()) for d in apart), math.sqrt(square)
+
+
+def at_factor(
+    terms: Sequence[Prior], is_open: Sequence[bool], factor: float, second_order: float | None = None
+) -> list[Prior]:
+    """Return the priors, the weights of the open ones times a factor."""
+    scaled = []
+    for term, open_ in zip(terms, is_open, strict=True):
+        if open_:
+            term = term.with_weight(term.weight * factor)
+            if second_order is not None and hasattr(term, "second_order"):
+                term = replace(term, second_order=second_order)
+        scaled.append(term)
+    return scaled
+
+
+def choose(folds: Sequence[Fold], callback: Callable[[float], object] | None = None) -> Choice:
+    """Return the factor with the best held-out score, found by walking downhill from factor 1.
+
+    callback: called with every factor that is tried.
+    """
+    path = _Path(folds, callback)
+    at = 0
+    for direction in (1, -1):
+        while len(path.images) < MOST and path.at(RATIO ** (at + direction)) < path.at(RATIO**at):
+            at += direction
+    best = RATIO**at
+    factors = np.array(sorted(path.images))
+    compared = [path.difference(f, best) for f in factors]
+    score, error = (np.array(column) for column in zip(*compared, strict=True))
+    at_edge = best in (factors[0], factors[-1])
+    factor = best if at_edge else _vertex(factors, score, int(np.searchsorted(factors, best)))
+    second = _second_order(path, folds[0], best)
+    note = ""
+    if at_edge:
+        note = f"the best weight is at the end of the path, {best:.3g} times the rule of thumb"
+    return Choice(factor, second, factors, score, error, len(folds), at_edge, note)
+
+
+def _vertex(factors: np.ndarray, score: np.ndarray, k: int) -> float:
+    """Return the factor at the vertex of the parabola through the best score and its neighbours."""
+    a, b, c = score[k - 1 : k + 2]
+    bend = a - 2.0 * b + c
+    shift = 0.5 * (a - c) / bend if bend > 0.0 else 0.0
+    return float(factors[k] * RATIO ** np.clip(shift, -0.5, 0.5))
+
+
+def _second_order(path: _Path, fold: Fold, factor: float) -> float | None:
+    """Return the second-order weight with the best score of half, once and twice the given one."""
+    open_terms = [term for term, open_ in zip(fold.terms, fold.open, strict=True) if open_]
+    given = [term.second_order for term in open_terms if hasattr(term, "second_order")]
+    if not given:
+        return None
+    scores = {given[0]: path.at(factor)}
+    for times in (0.5, 2.0):
+        scores[given[0] * times] = path.at(factor, given[0] * times)
+    return min(scores, key=scores.__getitem__)
