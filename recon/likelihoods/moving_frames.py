@@ -17,7 +17,7 @@ from recon.likelihoods.poisson import Poisson
 from recon.validation import NONNEGATIVE, Range, real_values, refuse
 
 STEPS_A_PIXEL = 16  # shifts are rounded to these
-_CLIMB = 12  # steps towards the best image
+_CLIMB = 6  # steps towards the best image
 _SHIFT = Range("shifts in pixels between -1e6 and 1e6", -1e6, 1e6)
 
 
