@@ -6,10 +6,12 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from recon.acquisition import TimeTags
 from recon.likelihoods.detection_times import DetectionTimes
 
 CLEAR = 8.0  # of the pulse's core: what is further from the surface is taken for background
 CERTAIN = 0.02  # largest chance of a wrong surface in a pixel that is asked
+SECTIONS = 50  # of the period, that `allowed_background` compares
 SURE = 5.0  # standard errors that a difference must have to be called one
 SHARE, SIGNAL = 0.1, 0.02  # of the declared background, of the signal: differences below are let pass
 
@@ -35,8 +37,30 @@ class BackgroundCheck:
             return ""
         return (
             f"the background does not fit: {self.declared:.3g} detections a trial are declared, and the tags"
-            f" away from the surface say {self.found:.3g} +- {self.standard_error:.1g}; correct the background"
+            f" away from the surface say {self.found:.3g} +- {self.standard_error:.1g}; correct it"
         )
+
+
+def allowed_background(tags: TimeTags) -> float:
+    """Return the largest factor, up to 1, of the declared background that the tags allow.
+
+    Background is uniform over the period, so it cannot be more than what the quietest fifth of the period
+    holds, and three standard errors. 1 with a dead time, which makes tags themselves uneven.
+    """
+    if tags.dead_time is not None or not tags.time.size:
+        return 1.0
+    opening, closing = (0.0, tags.period) if tags.gate is None else tags.gate
+    usable = np.ones(tags.shape, bool) if tags.mask is None else tags.mask
+    each = np.repeat(usable.ravel(), np.diff(tags.start))
+    tagged = np.sort(np.histogram(tags.time[each], SECTIONS, (opening, closing))[0])
+    quiet = tagged[: SECTIONS // 5]
+    declared = np.broadcast_to(np.asarray(tags.trials * np.asarray(tags.background)), tags.shape)[
+        usable
+    ].sum()
+    expected = float(declared) * (closing - opening) / tags.period / SECTIONS * quiet.size
+    if expected <= 0.0:
+        return 1.0
+    return float(min(1.0, (quiet.sum() + 3.0 * np.sqrt(quiet.sum() + 1.0)) / expected))
 
 
 def background_check(

@@ -23,15 +23,16 @@ from recon.imaging.task import Effort
 from recon.likelihoods.detection_times import DetectionTimes
 from recon.problem import Prior, Problem, Sum, default_depth_prior
 from recon.solvers import solve
+from recon.validation import NONNEGATIVE, number_or_map
 
 __all__ = ["DepthBelief", "DepthImage", "depth", "depth_belief", "open_settings", "scene_bounds"]
 
-TOLERANCE = 1e-3  # of depth, where the user gives none: closer solves change no pixel by a visible amount
+TOLERANCE = 1e-2  # of depth, where the user gives none: closer solves changed no error (measured)
 STEP = 2.0  # of the pulse's core: the step of depth at which an edge weighs half (measured)
 MARGIN = 8.0  # of the pulse's core: room in front of and behind the scene
 SURFACE = 3.0  # of the pulse's core: depths closer than this are the same surface
 FAINTEST = 0.1  # of the mean reflectivity: the least that is taken for the reflectivity of a target
-DIMMEST = 0.05  # signal detections: the least that a target is taken to cause
+DIMMEST = 0.1  # signal detections: the least that a target is taken to cause
 
 
 @dataclass(frozen=True, eq=False)
@@ -73,14 +74,15 @@ def depth(
     """Return the depth image that lowers half the deviance of the tags + prior, from the belief's median on.
 
     reflectivity: (rows, columns), known or estimated before. Where it is less than a tenth of its mean, or
-        than a twentieth of a detection, that is taken, so that tags can speak for a dark target and their
+        than a tenth of a detection, that is taken, so that tags can speak for a dark target and their
         lack against any.
     prior: generalized variation if left out; what it leaves open, `open_settings` sets.
-    effort: how closely to solve (to a gap of 1e-3 if left out), and whom to tell.
+    effort: how closely to solve (to a gap of 1e-2 if left out), and whom to tell.
 
     Raises InputError.
     """
     effort = effort or Effort()
+    reflectivity = np.asarray(number_or_map(reflectivity, "reflectivity", tags.shape, NONNEGATIVE))
     likelihood = DetectionTimes(tags, np.maximum(reflectivity, faintest_target(tags, reflectivity)))
     belief = depth_belief(likelihood)
     start = belief.depth

@@ -24,9 +24,10 @@ ANEW = 0.2  # share of neighbours whose depth has nothing to do with the pixel's
 APART = 0.1  # share of neighbours on the same object, some way off
 NEAR, FAR = 0.275, 4.5  # of the pulse's core: lengths over which the two laws of neighbours fall by e
 DAMPING = 0.85  # what a message that has travelled counts for
-LEAVE, COME = 0.01, 0.3  # share of neighbours without target beside one with, and the reverse
+LEAVE, COME = 0.003, 0.03  # share of neighbours without target beside one with, and the reverse
 LEAST = 3e-5  # of the likeliest bin's probability; less likely bins are not cut further
 MOST = 24  # bins of a pixel that are cut further
+NEVER = 1e-30  # likelihood of no target while depth is asked
 PHASES = 8  # places of a tag within its bin
 FAINT = 0.01  # of the noise; fainter parts of the pulse are left out
 
@@ -38,7 +39,7 @@ class DepthBelief:
     lattice: the bins; those listed are of its finest level.
     shape: (rows, columns).
     first, place: pixel q = row * columns + column has the bins place[e], e from first[q] to first[q + 1].
-    probability: (entries,) float32; with `absent` they sum to 1 in each pixel.
+    probability: (entries,) float32, if there is a target; in each pixel they sum to 1.
     absent: float32 (rows, columns), the probability that there is no target.
     """
 
@@ -75,18 +76,22 @@ class DepthBelief:
 def depth_belief(likelihood: DetectionTimes, lattice: DepthLattice | None = None) -> DepthBelief:
     """Return the belief in depth.
 
-    The likelihood of a bin of depth is the mean over the bin of exp(-L), L as in `DetectionTimes`, and that
-    of no target is the likelihood that all tags are background where `likelihood.signal` expects others.
+    The likelihood of a bin of depth is the mean over the bin of exp(-L), L as in `DetectionTimes`. Whether
+    there is a target is asked on the coarsest bins, of which none are left out: the odds of a pixel's own
+    tags, given what its neighbours say of its depth, against all tags being background where
+    `likelihood.signal` expects others; and then its neighbours', by the same trees.
     """
     lattice = depth_lattice(likelihood) if lattice is None else lattice
-    level = lattice.levels - 1
+    level = top = lattice.levels - 1
     size = lattice.scene[level].size
     pixels = likelihood.noise.size
     first = np.arange(pixels + 1, dtype=np.int64) * size
     place = np.tile(np.arange(size, dtype=np.int32), pixels)
     own = _Evidence(likelihood, lattice)
     while True:
-        probability, absent = _beliefs(own, lattice, level, first, place, both=level == 0)
+        probability, odds = _beliefs(own, lattice, level, first, place, both=level in (0, top))
+        if level == top:
+            absent = _absence(odds, likelihood.shape)
         if level == 0:
             return DepthBelief(lattice, likelihood.shape, first, place, probability, absent)
         level -= 1
@@ -105,7 +110,8 @@ class _Evidence:
         least = float(noise[used].min()) if used.any() else 1.0
         kind[used] = 10.0 * np.log(noise[used] / least)
         levels = least * np.exp(0.1 * (np.arange(max(int(kind.max()), 0) + 1) + 0.5))
-        seen = pulse.knots[pulse.density(pulse.knots) > FAINT * least]
+        height = pulse.density(pulse.knots)
+        seen = pulse.knots[height >= min(FAINT * least, 0.5 * height.max())]
         # For a tag at y the pulse is seen from depths y - last knot to y - first knot.
         first = math.floor(-seen[-1] / self._width) - 1
         length = min(math.ceil(-seen[0] / self._width) + 2 - first, self._bins)
@@ -145,7 +151,7 @@ class _Evidence:
 def _beliefs(
     own: _Evidence, lattice: DepthLattice, level: int, first: np.ndarray, place: np.ndarray, both: bool
 ) -> tuple[np.ndarray, np.ndarray]:
-    """Return the probability of the listed bins, and of no target (rows, columns).
+    """Return the probability of the listed bins, and each pixel's own odds of a target (pixels,).
 
     both: whether both trees are asked; else the one of rows alone.
     """
@@ -153,22 +159,44 @@ def _beliefs(
 
     likely, absent = own.on(level, first, place)
     scene, law = lattice.scene[level], _law(lattice, level, own.core)
-    shape = own.shape
+    messages = _messages(place, first, likely, np.full_like(absent, NEVER), scene, law, own.shape, both)[0]
+    odds = np.empty_like(absent)
+    kernels.believe(first, place, likely, messages, scene, np.float32(DAMPING), likely, odds)
+    return likely, odds / absent
+
+
+def _messages(
+    place: np.ndarray, first: np.ndarray, likely: np.ndarray, absent: np.ndarray, scene: np.ndarray,
+    law: np.ndarray, shape: tuple[int, int], both: bool,
+) -> tuple[np.ndarray, np.ndarray]:  # fmt: skip
+    """Return the log messages that reach each bin, and the state without target, mean of the trees asked."""
+    from recon.imaging import depth_belief_kernels as kernels
+
+    data, damping = (place, first, likely, absent), np.float32(DAMPING)
     messages = [np.zeros_like(likely), np.zeros_like(absent)]
     for down in (True, False) if both else (True,):
         hanging = [np.empty_like(likely), np.empty_like(absent)]
-        zero = [np.zeros_like(likely), np.zeros_like(absent)]
-        data = (place, first, likely, absent)
-        kernels.chains(*data, *zero, scene, law, np.float32(DAMPING), down, shape, *hanging)
-        kernels.chains(*data, *hanging, scene, law, np.float32(DAMPING), not down, shape, *zero)
-        for kept, one, two in zip(messages, hanging, zero, strict=True):
+        other = [np.zeros_like(likely), np.zeros_like(absent)]
+        kernels.chains(*data, *other, scene, law, damping, down, shape, *hanging)
+        kernels.chains(*data, *hanging, scene, law, damping, not down, shape, *other)
+        for kept, one, two in zip(messages, hanging, other, strict=True):
             kept += one
             kept += two
-    share = LEAVE / (LEAVE + COME)
-    damping = np.float32(0.5 * DAMPING if both else DAMPING)
-    none = np.empty_like(absent)
-    kernels.believe(first, place, likely, absent, *messages, scene, np.float32(share), damping, likely, none)
-    return likely, none.reshape(shape)
+    return tuple(0.5 * part if both else part for part in messages)
+
+
+def _absence(odds: np.ndarray, shape: tuple[int, int]) -> np.ndarray:
+    """Return the probability of no target (rows, columns), from each pixel's own odds of one."""
+    first = np.arange(odds.size + 1)
+    law = np.array([0.0, 1.0 - LEAVE, 0.0, 0.0, 0.0, COME, LEAVE], np.float32)
+    likely = np.minimum(odds, np.float32(1e20)).astype(np.float32)
+    largest = np.maximum(likely, np.float32(1.0))
+    there, not_there = likely / largest, np.float32(1.0) / largest
+    place, scene = np.zeros(odds.size, np.int32), np.ones(1, np.float32)
+    present, absent = _messages(place, first, there, not_there, scene, law, shape, both=True)
+    with np.errstate(over="ignore"):
+        against = np.log(not_there / there) + DAMPING * (absent - present) + math.log(LEAVE / COME)
+        return (1.0 / (1.0 + np.exp(-against.astype(np.float64)))).astype(np.float32).reshape(shape)
 
 
 def _law(lattice: DepthLattice, level: int, core: float) -> np.ndarray:
@@ -183,9 +211,9 @@ def _law(lattice: DepthLattice, level: int, core: float) -> np.ndarray:
         leaving = -length / width * math.expm1(-width / length)
         ratios.append(leaving / (2.0 - leaving))
     near, far = ratios
-    same = (1.0 - LEAVE) * (1.0 - ANEW - APART) * (1.0 - near) / (1.0 + near)
-    apart = (1.0 - LEAVE) * APART * (1.0 - far) / (1.0 + far)
-    return np.array([near, same, far, apart, (1.0 - LEAVE) * ANEW, COME, LEAVE], np.float32)
+    same = (1.0 - ANEW - APART) * (1.0 - near) / (1.0 + near)
+    apart = APART * (1.0 - far) / (1.0 + far)
+    return np.array([near, same, far, apart, ANEW, 0.0, 0.0], np.float32)
 
 
 def _cut(

@@ -112,21 +112,23 @@ def _powers(base):
 
 
 @numba.njit(parallel=True, **COMPILE)
-def believe(first, place, likely, absent, messages, messages_absent, scene, share, damping, out, none):
-    """Write the probability of every state: likelihood, times the scene's law, times damped messages."""
+def believe(first, place, likely, messages, scene, damping, out, odds):
+    """Write the probability of every bin, likelihood times the scene's law times damped messages.
+
+    odds: (pixels,), the mean of the likelihood under what all but the pixel itself says.
+    """
     for q in prange(first.size - 1):
         lo, hi = first[q], first[q + 1]
-        top = math.log(share * absent[q]) + damping * messages_absent[q]
-        none[q] = top
+        top = np.float32(-math.inf)
         for e in range(lo, hi):
-            out[e] = math.log((1.0 - share) * likely[e] * scene[place[e]]) + damping * messages[e]
-            top = max(top, out[e])
-        none[q] = math.exp(none[q] - top)
-        total = none[q]
+            top = max(top, math.log(scene[place[e]]) + damping * messages[e])
+        others, total = np.float32(0.0), np.float32(0.0)
         for e in range(lo, hi):
-            out[e] = math.exp(out[e] - top)
+            other = math.exp(math.log(scene[place[e]]) + damping * messages[e] - top)
+            others += other
+            out[e] = max(other * likely[e], np.float32(1e-37))
             total += out[e]
-        none[q] /= total
+        odds[q] = total / others
         for e in range(lo, hi):
             out[e] /= total
 

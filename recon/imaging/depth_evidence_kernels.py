@@ -10,6 +10,7 @@ from numba import prange
 
 from recon.kernels import COMPILE
 
+LEAST = np.float32(1e-30)
 FULL = np.float32(80.0)  # exponents beyond it are of bins that are not listed
 
 
@@ -77,9 +78,9 @@ def evidence(
             for e in range(lo, hi):
                 listed[place[e]] = False
             flat = math.exp(-top)
-            absent[q] = math.exp(signal[q] - top)
+            absent[q] = max(math.exp(signal[q] - top), LEAST)
             if not live and not tags:
-                likely[lo:hi] = flat
+                likely[lo:hi] = max(flat, LEAST)
                 continue
             if dense:
                 for m in range(finest):
@@ -94,7 +95,7 @@ def evidence(
                             score[m] = 0.0
             for e in range(lo, hi):
                 size = min(split, finest - place[e] * split)
-                likely[e] = max(flat + total[place[e]] / size, np.float32(1e-30))
+                likely[e] = max(flat + total[place[e]] / size, LEAST)
             if dense:
                 total[:] = 0.0
             else:

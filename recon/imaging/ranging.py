@@ -4,12 +4,18 @@ from __future__ import annotations
 
 from dataclasses import replace
 
+import numpy as np
+
 from recon.acquisition import TimeTags
+from recon.imaging.background_check import allowed_background, background_check
 from recon.imaging.depth import DepthImage, depth
 from recon.imaging.image import PhysicalImage
 from recon.imaging.reflectivity import counting_likelihood, gated_reflectivity, live_counts
 from recon.imaging.task import Effort, image_of
+from recon.likelihoods.detection_times import DetectionTimes
 from recon.problem import Prior, Sum
+
+TOO_MUCH = 0.9  # factor of the declared background below which less is taken
 
 
 def ranging(
@@ -21,11 +27,32 @@ def ranging(
     """Return the reflectivity and the depth image.
 
     A first reflectivity comes from the number of tags alone; given it, `depth`; given that, the
-    reflectivity from the tags near the return.
+    reflectivity from the tags near the return. With a gate or a dead time, which may have cut the pulse or
+    hidden it, the two are found once more.
+
+    Where more background is declared than the quietest part of the period holds, no more than that is
+    taken, and the depth image says so.
     """
     effort = effort or Effort()
-    likelihood = counting_likelihood(live_counts(tags))
+    factor = allowed_background(tags)
+    if factor < TOO_MUCH:
+        taken = replace(tags, background=np.asarray(tags.background) * factor)
+        brightness, surface = ranging(taken, depth_prior, reflectivity_prior, effort)
+        return brightness, _told(surface, tags, brightness.image, factor)
     rough = replace(effort, weight="rule")  # what it is for does not need the best weight
+    likelihood = counting_likelihood(live_counts(tags))
     first = image_of("first_reflectivity", likelihood, reflectivity_prior, "1", rough)
     surface = depth(tags, first.image, depth_prior, effort)
+    if tags.gate is not None or tags.dead_time is not None:
+        second = gated_reflectivity(tags, surface.image, reflectivity_prior, rough)
+        surface = depth(tags, second.image, depth_prior, effort)
     return gated_reflectivity(tags, surface.image, reflectivity_prior, effort), surface
+
+
+def _told(surface: DepthImage, tags: TimeTags, reflectivity: np.ndarray, factor: float) -> DepthImage:
+    """Return the depth image with what is to say of a background that was declared too high."""
+    times = DetectionTimes(tags, reflectivity)
+    check = background_check(times, tags.background, surface.image, surface.wrong_surface)
+    said = check.words or "the background declared is more than the quietest part of the period holds"
+    note = f"{said}; {factor:.2g} times the declared background was taken"
+    return replace(surface, background=check, notes=(note, *surface.notes))

@@ -42,12 +42,20 @@ def majorise_minimise(problem: Problem, start: np.ndarray, tolerance: float) -> 
         run = PrimalDual(Problem(majorant, problem.priors, problem.bounds), image, blocks, step)
         before = run.measure()
         scale = likelihood_value - majorant.value(image)  # from the majorant's objective to the true one
-        state, lowered = _minimise(run, before.objective, before.objective + scale, tolerance)
-        iterations += run.iteration
-        step = run.step
-        best = before.objective - max(before.dual_value, state.dual_value)
         objective = before.objective + scale
+        state, lowered = _minimise(run, before.objective, objective, tolerance)
+        iterations += run.iteration
+        best = before.objective - max(before.dual_value, state.dual_value)
         gap = relative_gap(objective, objective - best, image.size)
+        if not lowered and gap > tolerance:
+            # Duals and a step that have come from other majorants may be far from this one's.
+            blocks = [prior.block(problem.shape) for prior in problem.priors]
+            run = PrimalDual(run.problem, image, blocks)
+            state, lowered = _minimise(run, before.objective, objective, tolerance)
+            iterations += run.iteration
+            best = min(best, before.objective - state.dual_value)
+            gap = relative_gap(objective, objective - best, image.size)
+        step = run.step
         if lowered:
             candidate = state.image.copy()
             candidate_value = problem.likelihood.value(candidate)
