@@ -146,6 +146,16 @@ def _reconstruct(commands: argparse._SubParsersAction, common: argparse.Argument
         help="weight of that prior, above 0; larger is smoother (default: a rule of thumb from the data)",
     )
     command.add_argument(
+        "--unknown-current",
+        action="store_true",
+        help="estimate the dose of every line from the frames (drift and stripes of the current)",
+    )
+    command.add_argument(
+        "--moving",
+        action="store_true",
+        help="register the frames and fit each where it was (a stage that drifts)",
+    )
+    command.add_argument(
         "--tolerance",
         metavar="T",
         type=_real,

@@ -31,6 +31,8 @@ class Settings:
     prior: Prior | None = None
     tolerance: float | None = None
     max_iterations: int = 30_000
+    unknown_current: bool = False
+    moving: bool = False
 
 
 @dataclass(frozen=True, eq=False)
@@ -70,6 +72,8 @@ class Job:
                 tolerance=self.settings.tolerance,
                 max_iterations=self.settings.max_iterations,
                 callback=progress,
+                unknown_current=self.settings.unknown_current,
+                moving=self.settings.moving,
             )
             progress.step("writing")
             records = self._write(source, result)

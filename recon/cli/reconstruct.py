@@ -17,7 +17,9 @@ def run(options: Namespace) -> int:
     prior = prior_named(
         options.prior, options.weight, isinstance(source.acquisition, TimeTags | TimeHistogram)
     )
-    settings = Settings(prior, options.tolerance, options.max_iterations)
+    settings = Settings(
+        prior, options.tolerance, options.max_iterations, options.unknown_current, options.moving
+    )
     out = Path("fewcount-out", Path(options.file).stem) if options.out is None else Path(options.out)
     with output_folder(out) as folder:
         job = Job(folder, settings, options)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import replace
 
 import numpy as np
 
@@ -13,28 +14,77 @@ from recon.imaging.yield_estimators import conventional_yield, one_frame_note, t
 from recon.likelihoods.contract import Likelihood
 from recon.likelihoods.gaussian import Gaussian
 from recon.likelihoods.poisson import Poisson
-from recon.problem import Prior, Sum
+from recon.problem import Prior, Sum, default_prior
+from recon.weights import settle
 
+TRENDED = 16  # frames from which on a trend over the dwell is looked for
+UNLIKELY = 1e-3  # chance of a trend by accident below which a note says so
 SATURATED = 1e-3  # share of readings at the ceiling from which on a note says so
 
 
 def electron_yield(
-    frames: Frames, prior: Prior | Sum | None = None, effort: Effort | None = None
+    frames: Frames,
+    prior: Prior | Sum | None = None,
+    effort: Effort | None = None,
+    *,
+    unknown_current: bool = False,
+    moving: bool = False,
 ) -> PhysicalImage:
     """Return the yield image: mean detected electrons per primary particle.
 
     Uses how the electrons fall on the frames, not their total alone: a frame with several electrons
     holds fewer primaries than its count suggests. With a mark law the frames hold readings.
+
+    unknown_current: whether to estimate the dose of every line from the frames first (`estimate_current`).
+    moving: whether to register the frames (`register`) and to fit them where they were (`MovingFrames`).
+
+    Both take counts, not readings. Raises InputError.
     """
+    effort = effort or Effort()
+    notes = list(_notes(frames))
+    if unknown_current:
+        from recon.imaging.beam_current import estimate_current
+
+        current = estimate_current(frames)
+        frames = Frames(frames.counts, frames.dose, frames.mask, current=current.factors)
+        notes.append(current.note)
+    if moving:
+        from recon.imaging.registration import register
+
+        drift = register(frames)
+        notes.append(drift.note)
+        return _at_shifts(frames, drift.shifts, prior, effort, tuple(filter(None, notes)))
     return image_of(
         "electron_yield",
         yield_likelihood(frames),
         prior,
         "1",
-        effort or Effort(),
+        effort,
         folds=lambda number, seed: frame_folds(frames, number, seed),
-        notes=tuple(_notes(frames)),
+        notes=tuple(filter(None, notes)),
     )
+
+
+def _at_shifts(
+    frames: Frames, shifts: np.ndarray, prior: Prior | Sum | None, effort: Effort, notes: tuple[str, ...]
+) -> PhysicalImage:
+    """Return the yield image of frames that moved.
+
+    The weight is that of frames at rest: the information of `MovingFrames`, pixel by pixel, leaves out what
+    a frame says of four pixels together.
+    """
+    from recon.likelihoods.moving_frames import MovingFrames
+
+    still = yield_likelihood(frames)
+    terms, choice = settle(
+        default_prior() if prior is None else prior,
+        still,
+        still.default_bounds,
+        effort.weight,
+        lambda number, seed: frame_folds(frames, number, seed),
+    )
+    image = image_of("electron_yield", MovingFrames(frames, shifts), Sum(*terms), "1", effort, notes=notes)
+    return replace(image, choice=choice)
 
 
 def yield_likelihood(frames: Frames) -> Likelihood:
@@ -86,6 +136,12 @@ def _notes(frames: Frames) -> Iterator[str]:
         dose = float(np.mean(total_dose(frames)))
         eta = max(float(np.nanmean(conventional_yield(frames).image)), 1e-3)
         yield "a single frame: its counts are taken under the law of the total. " + one_frame_note(dose, eta)
+    if frames.law is None and frames.frames >= TRENDED:
+        from recon.imaging.yield_trend import yield_trend
+
+        trend = yield_trend(frames)
+        if trend.p_value < UNLIKELY:
+            yield trend.note
     if frames.dropped:
         listed = ", ".join(str(f) for f in frames.dropped)
         yield f"frames without finite readings were dropped: {listed}"

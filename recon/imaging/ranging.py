@@ -15,6 +15,9 @@ from recon.imaging.task import Effort, image_of
 from recon.likelihoods.detection_times import DetectionTimes
 from recon.problem import Prior, Sum
 
+ROUNDS = (
+    3  # more of both with a dead time: detections in a pulse hide the rest of it, so each moves the other
+)
 TOO_MUCH = 0.9  # factor of the declared background below which less is taken
 
 
@@ -27,8 +30,8 @@ def ranging(
     """Return the reflectivity and the depth image.
 
     A first reflectivity comes from the number of tags alone; given it, `depth`; given that, the
-    reflectivity from the tags near the return. With a gate or a dead time, which may have cut the pulse or
-    hidden it, the two are found once more.
+    reflectivity from the tags near the return. With a gate, which may have cut the pulse, the two are found
+    once more, and with a dead time three times more.
 
     Where more background is declared than the quietest part of the period holds, no more than that is
     taken, and the depth image says so.
@@ -43,9 +46,9 @@ def ranging(
     likelihood = counting_likelihood(live_counts(tags))
     first = image_of("first_reflectivity", likelihood, reflectivity_prior, "1", rough)
     surface = depth(tags, first.image, depth_prior, effort)
-    if tags.gate is not None or tags.dead_time is not None:
-        second = gated_reflectivity(tags, surface.image, reflectivity_prior, rough)
-        surface = depth(tags, second.image, depth_prior, effort)
+    for _ in range(ROUNDS if tags.dead_time is not None else tags.gate is not None):
+        brightness = gated_reflectivity(tags, surface.image, reflectivity_prior, effort)
+        surface = depth(tags, brightness.image, depth_prior, effort)
     return gated_reflectivity(tags, surface.image, reflectivity_prior, effort), surface
 
 

@@ -22,6 +22,8 @@ def reconstruct(
     max_iterations: int = 30_000,
     callback: Callable[[str, State], object] | None = None,
     weight: str = "auto",
+    unknown_current: bool = False,
+    moving: bool = False,
 ) -> Reconstruction:
     """Return the images that the acquisition allows, each with its uncertainty and its certificate.
 
@@ -36,6 +38,8 @@ def reconstruct(
     max_iterations: see `recon.solve`.
     weight: how weights that the priors leave open are set: "auto" = the one that predicts held-out data best
         (`recon.weights`; that of depth by the rule of thumb), "rule" = a rule of thumb for the data.
+    unknown_current, moving: for Frames, whether to estimate the dose of every line from the frames, and
+        whether to register frames that moved; see `recon.imaging.electron_yield`.
     callback: called with the name of the image and the state, as solving goes on; True stops that image.
 
     Raises InputError for an argument that cannot be used.
@@ -48,6 +52,9 @@ def reconstruct(
             )
     if reflectivity_prior is not None and not isinstance(acquisition, TimeTags | TimeHistogram):
         raise InputError("reflectivity_prior is for TimeTags and TimeHistogram; for others give prior.")
+    if (unknown_current or moving) and not isinstance(acquisition, Frames):
+        name = "unknown_current" if unknown_current else "moving"
+        raise InputError(f"{name} is for Frames; leave it out for a {type(acquisition).__name__}.")
     effort = Effort(tolerance, max_iterations, callback, checked_rule(weight))
     if isinstance(acquisition, Counts):
         from recon.imaging.reflectivity import reflectivity
@@ -56,7 +63,11 @@ def reconstruct(
     if isinstance(acquisition, Frames):
         from recon.imaging.electron_yield import electron_yield
 
-        return Reconstruction(electron_yield=electron_yield(acquisition, prior, effort))
+        return Reconstruction(
+            electron_yield=electron_yield(
+                acquisition, prior, effort, unknown_current=unknown_current, moving=moving
+            )
+        )
     if isinstance(acquisition, TimeHistogram):
         acquisition = acquisition.tags()
     if isinstance(acquisition, TimeTags):

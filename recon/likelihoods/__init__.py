@@ -11,6 +11,7 @@ if TYPE_CHECKING:
     from recon.likelihoods.contract import Interval, Likelihood
     from recon.likelihoods.detection_times import DetectionTimes
     from recon.likelihoods.gaussian import Gaussian
+    from recon.likelihoods.moving_frames import MovingFrames
     from recon.likelihoods.poisson import Poisson
     from recon.likelihoods.poisson_marks import PoissonMarks
 
@@ -21,13 +22,14 @@ _HOMES = {
     "Gaussian": "gaussian",
     "Interval": "contract",
     "Likelihood": "contract",
+    "MovingFrames": "moving_frames",
     "Poisson": "poisson",
     "PoissonMarks": "poisson_marks",
 }
 
 __all__ = [
-    "AnalogMarks", "BernoulliTrials", "DetectionTimes", "Gaussian", "Interval", "Likelihood", "Poisson",
-    "PoissonMarks",
+    "AnalogMarks", "BernoulliTrials", "DetectionTimes", "Gaussian", "Interval", "Likelihood",
+    "MovingFrames", "Poisson", "PoissonMarks",
 ]  # fmt: skip
 
 

@@ -9,6 +9,7 @@ import numpy as np
 
 from recon.acquisition import Counts, Frames, TimeHistogram, TimeTags
 from recon.imaging.reflectivity import counting_likelihood
+from recon.imaging.yield_estimators import conventional_yield, total_dose
 
 if TYPE_CHECKING:
     from recon.imaging import Reconstruction
@@ -18,8 +19,14 @@ Acquisition = Counts | TimeTags | TimeHistogram | Frames
 
 
 def detections(acquisition: Acquisition) -> np.ndarray:
-    """Return the number of detections of every pixel, over all its trials or frames."""
+    """Return the number of detections of every pixel, over all its trials or frames.
+
+    Of readings, the electrons that their sum stands for, rounded.
+    """
     if isinstance(acquisition, Frames):
+        if acquisition.law is not None:
+            electrons = conventional_yield(acquisition).image * total_dose(acquisition)
+            return np.maximum(np.rint(np.nan_to_num(electrons)), 0.0).astype(np.int64)
         return acquisition.counts.sum(axis=0, dtype=np.int64)
     return _counts(acquisition).detections
 
@@ -57,9 +64,7 @@ def pixel_by_pixel(acquisition: Acquisition, reconstruction: Reconstruction) -> 
 
 def _conventional(name: str, acquisition: Acquisition, reconstruction: Reconstruction) -> np.ndarray:
     if isinstance(acquisition, Frames):
-        electrons = detections(acquisition) / (acquisition.frames * acquisition.dose)
-        usable = True if acquisition.mask is None else acquisition.mask
-        return np.where(usable, electrons, np.nan).astype(np.float32)
+        return conventional_yield(acquisition).image.astype(np.float32)
     if name == "depth":
         from recon.likelihoods.detection_times import DetectionTimes
 

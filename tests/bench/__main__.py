@@ -7,10 +7,10 @@ import dataclasses
 import json
 import sys
 
-from tests.bench import denoising, depth, engine, scale, startup
+from tests.bench import denoising, depth, electron_yield, engine, scale, startup
 from tests.bench.measure import Row
 
-GROUPS = {module.GROUP: module.rows for module in (engine, scale, denoising, startup, depth)}
+GROUPS = {module.GROUP: module.rows for module in (engine, scale, denoising, startup, depth, electron_yield)}
 
 
 def main(arguments: list[str] | None = None) -> int:

@@ -65,7 +65,7 @@ def depth_error(image: np.ndarray, truth: np.ndarray) -> DepthError:
 
 
 def windowed(tags: recon.TimeTags, reflectivity: np.ndarray, widths: tuple[float, ...]) -> list[np.ndarray]:
-    """Return, for each rms of a Gaussian window (pixels), the depth that the pooled log-likelihood likes best."""
+    """Return, for each rms of a Gaussian window (pixels), the depth of the best pooled log-likelihood."""
     metres = SPEED_OF_LIGHT / 2.0
     rms, far = metres * PULSE, metres * PERIOD
     bins = round(far / (BIN * rms))
