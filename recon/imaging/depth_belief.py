@@ -24,9 +24,12 @@ ANEW = 0.2  # share of neighbours whose depth has nothing to do with the pixel's
 APART = 0.1  # share of neighbours on the same object, some way off
 NEAR, FAR = 0.275, 4.5  # of the pulse's core: lengths over which the two laws of neighbours fall by e
 DAMPING = 0.85  # what a message that has travelled counts for
-LEAVE, COME = 0.003, 0.03  # share of neighbours without target beside one with, and the reverse
+LEAVE, COME = 0.01, 0.01  # share of neighbours without target beside one with, and the reverse
 LEAST = 3e-5  # of the likeliest bin's probability; less likely bins are not cut further
 MOST = 24  # bins of a pixel that are cut further
+WORTH = (
+    0.2  # signal detections: what a target is taken to cause at least when it is asked whether there is one
+)
 NEVER = 1e-30  # likelihood of no target while depth is asked
 PHASES = 8  # places of a tag within its bin
 FAINT = 0.01  # of the noise; fainter parts of the pulse are left out
@@ -91,7 +94,7 @@ def depth_belief(likelihood: DetectionTimes, lattice: DepthLattice | None = None
     while True:
         probability, odds = _beliefs(own, lattice, level, first, place, both=level in (0, top))
         if level == top:
-            absent = _absence(odds, likelihood.shape)
+            absent = _absence(odds * own.dimmed, likelihood.shape)
         if level == 0:
             return DepthBelief(lattice, likelihood.shape, first, place, probability, absent)
         level -= 1
@@ -126,6 +129,8 @@ class _Evidence:
         weight = trust(likelihood).ravel()
         expected = np.where(likelihood.exposed, likelihood.signal * likelihood.trials, 0.0)
         expected = expected.ravel().astype(np.float32) * weight
+        missing = np.where(likelihood.exposed, np.maximum(WORTH - expected.reshape(self.shape), 0.0), 0.0)
+        self.dimmed = np.exp(-missing).ravel()
         live = likelihood.live
         level = live.level
         if not live.is_whole:

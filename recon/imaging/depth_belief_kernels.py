@@ -29,7 +29,8 @@ def chains(
     """Write the log of the messages that reach each state along its column (down) or its row.
 
     likely, absent: likelihoods of a pixel's own data; before, before_absent: log messages that count with
-    them, times damping; after, after_absent: what is written. law: see `Neighbours.row`.
+    them, times damping; after, after_absent: what is written. law: near's base, same (1 -
+    base) / (1 + base), far's and apart's alike, anew, come, leave.
     """
     rows, columns = shape
     longest = 0

@@ -124,5 +124,5 @@ def _losses(edge, level, width, pulse, lost):
         total = 0.0
         for t in range(pulse.size):
             n = b + t - half
-            total += pulse[t] * mean[n - bins if n >= bins else (n + bins if n < 0 else n)]
+            total += pulse[t] * mean[n % bins]
         lost[b] = total

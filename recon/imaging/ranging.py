@@ -58,4 +58,5 @@ def _told(surface: DepthImage, tags: TimeTags, reflectivity: np.ndarray, factor:
     check = background_check(times, tags.background, surface.image, surface.wrong_surface)
     said = check.words or "the background declared is more than the quietest part of the period holds"
     note = f"{said}; {factor:.2g} times the declared background was taken"
-    return replace(surface, background=check, notes=(note, *surface.notes))
+    others = (other for other in surface.notes if other != surface.background.words)
+    return replace(surface, background=check, notes=(note, *others))

@@ -143,8 +143,8 @@ def test_a_tolerance_is_recorded_and_kept():
     assert loose.status is Status.CONVERGED
     assert loose.diagnostics.relative_gap <= 0.3
     left_out = depth(tags, np.ones(scene.shape), priors.TotalVariation(), Effort(max_iterations=10))
-    assert left_out.tolerance == 1e-3
-    assert (left_out.status is Status.CONVERGED) == (left_out.diagnostics.relative_gap <= 1e-3)
+    assert left_out.tolerance == 1e-2
+    assert (left_out.status is Status.CONVERGED) == (left_out.diagnostics.relative_gap <= 1e-2)
 
 
 def test_a_callback_can_stop():
@@ -153,14 +153,20 @@ def test_a_callback_can_stop():
     assert result.status is Status.STOPPED
 
 
-@pytest.mark.xfail(
-    strict=True, reason="ends NOT_MONOTONE, or at the limit, with gaps of a hundredth to a tenth"
-)
-@pytest.mark.parametrize("seed", [0])
+@pytest.mark.parametrize("seed", SEEDS)
 def test_generalized_variation_converges(seed):
     scene = slopes()[::4, ::4]
     result = depth(acquire(scene, seed, signal=1.0, background=1.0), np.ones(scene.shape))
     assert result.status is Status.CONVERGED
+    assert result.diagnostics.relative_gap <= 1e-2
+
+
+@pytest.mark.xfail(strict=True, reason="ends NOT_MONOTONE at a gap of 0.009 after 16 600 iterations")
+@pytest.mark.parametrize("seed", [0])
+def test_generalized_variation_converges_closely(seed):
+    scene = slopes()[::4, ::4]
+    tags = acquire(scene, seed, signal=1.0, background=1.0)
+    assert depth(tags, np.ones(scene.shape), effort=Effort(1e-3)).status is Status.CONVERGED
 
 
 # Settings
@@ -214,7 +220,7 @@ def test_bounds_hold_the_start_and_some_room():
 def test_a_dark_target_is_taken_to_have_some_reflectivity():
     tags = acquire(np.full((4, 5), 3.0), 8, signal=100.0)
     np.testing.assert_allclose(faintest_target(tags, np.ones((4, 5))), 0.1)
-    np.testing.assert_allclose(faintest_target(tags, np.full((4, 5), 1e-6)), 0.05 / 100.0)
+    np.testing.assert_allclose(faintest_target(tags, np.full((4, 5), 1e-6)), 0.1 / 100.0)
     none = replace(tags, trials=np.where(np.eye(4, 5) > 0, 0.0, 1000.0), row=[], column=[], time=[])
     np.testing.assert_array_equal(np.isfinite(faintest_target(none, np.ones((4, 5)))), True)
 
@@ -231,16 +237,8 @@ def test_a_prior_for_the_conic_solver_is_refused():
     ("reflectivity", "message"),
     [
         (np.full((6, 6), np.nan), r"reflectivity at \(0, 0\) is nan; give a finite number, 0 or more"),
-        pytest.param(
-            np.ones((6, 5)),
-            "reflectivity has shape",
-            marks=pytest.mark.xfail(strict=True, raises=ValueError, reason="a ValueError of numpy's"),
-        ),
-        pytest.param(
-            np.full((6, 6), -1.0),
-            r"reflectivity at \(0, 0\) is -1.0; give a finite number, 0 or more",
-            marks=pytest.mark.xfail(strict=True, reason="taken for the faintest target"),
-        ),
+        (np.ones((6, 5)), "reflectivity has shape"),
+        (np.full((6, 6), -1.0), r"reflectivity at \(0, 0\) is -1.0; give a finite number, 0 or more"),
     ],
 )
 def test_bad_reflectivity(reflectivity, message):
@@ -257,11 +255,6 @@ def test_no_signal_anywhere_is_filled_everywhere():
     assert depth(nothing, np.zeros((8, 8)), effort=QUICK).filled.all()
 
 
-@pytest.mark.xfail(
-    strict=True,
-    raises=IndexError,
-    reason="where the pulse is below a hundredth of the noise there is no table",
-)
 def test_a_background_above_all_signal():
     scene = np.full((4, 4), 3.0)
     result = depth(acquire(scene, 0, 1.0, 2000.0), np.zeros((4, 4)), effort=QUICK)

@@ -46,13 +46,13 @@ def listed(belief, values):
 
 
 def states(likelihood):
-    """The evidence of every state, (pixels, bins + 1), no target last."""
+    """The evidence of every bin (pixels, bins), and of no target (pixels,)."""
     lattice = depth_lattice(likelihood)
     bins, pixels = lattice.scene[0].size, likelihood.noise.size
     first = np.arange(pixels + 1) * bins
     place = np.tile(np.arange(bins, dtype=np.int32), pixels)
     likely, absent = module._Evidence(likelihood, lattice).on(0, first, place)
-    return np.column_stack([likely.reshape(pixels, bins), absent]).astype(float)
+    return likely.reshape(pixels, bins).astype(float), absent.astype(float)
 
 
 def ratio(length, width):
@@ -64,7 +64,7 @@ def ratio(length, width):
 
 
 def law(likelihood):
-    """The law of the scene (bins + 1,) and that of a neighbour given a pixel, (bins + 1, bins + 1)."""
+    """The law of the scene (bins,) and that of a neighbour given a pixel, (bins, bins)."""
     lattice = depth_lattice(likelihood)
     scene, core = lattice.scene[0].astype(float), likelihood.pulse.core
     away = np.abs(np.subtract.outer(np.arange(scene.size), np.arange(scene.size)))
@@ -73,15 +73,17 @@ def law(likelihood):
     for share, length in zip(shares, (module.NEAR * core, module.FAR * core), strict=True):
         r = ratio(length, lattice.width)
         given += share * (1.0 - r) / (1.0 + r) * r**away
+    return scene, given
+
+
+def presence():
+    """The law of a target and none (2,), and that of a neighbour given a pixel, (2, 2)."""
     leave, come = module.LEAVE, module.COME
-    whole = np.full((scene.size + 1, scene.size + 1), leave)
-    whole[:-1, :-1] = (1.0 - leave) * given
-    whole[-1] = np.append(come * scene, 1.0 - come)
-    return np.append(come * scene, leave) / (leave + come), whole
+    return np.array([come, leave]) / (leave + come), np.array([[1.0 - leave, leave], [come, 1.0 - come]])
 
 
 def enumerated(evidence, scene, given, edges, root):
-    """The probability of the root's states: the sum over every state of every pixel of a tree.
+    """The weight of the root's states: the sum over every state of every pixel of a tree.
 
     edges: (parent, child) pairs, away from the root.
     """
@@ -92,8 +94,18 @@ def enumerated(evidence, scene, given, edges, root):
         joint = joint * given[spread[parent], spread[child]]
     for p in range(pixels):
         joint = joint * evidence[p][spread[p]]
-    total = joint.sum(axis=tuple(k for k in range(pixels) if k != root))
-    return total / total.sum()
+    return joint.sum(axis=tuple(k for k in range(pixels) if k != root))
+
+
+def two_trees(shape, i, j):
+    """The edges of a pixel's row with the columns that hang off it, and of its column with the rows."""
+    index = np.arange(shape[0] * shape[1]).reshape(shape)
+    of_row, of_column = line(j, list(index[i])), line(i, list(index[:, j]))
+    for k in range(shape[1]):
+        of_row += line(i, list(index[:, k]))
+    for k in range(shape[0]):
+        of_column += line(j, list(index[k]))
+    return of_row, of_column
 
 
 def line(root, pixels):
@@ -104,21 +116,34 @@ def line(root, pixels):
 
 @pytest.mark.parametrize("seed", SEEDS)
 @pytest.mark.parametrize(
-    ("columns", "settings"), [(5, {}), (6, {"signal": 0.7}), (5, {"trials": 9, "dead": 1})]
+    ("columns", "settings"),
+    [(5, {}), (6, {"signal": 0.7}), (3, {"rms": 0.05 * PERIOD, "trials": 9, "dead": 1})],
 )
 def test_a_row_is_a_chain(monkeypatch, unpruned, seed, columns, settings):
-    """Every state of every pixel, without target included, by enumeration of 10^5 and more."""
+    """Every depth of every pixel, by enumeration of 10^5 and more; then with and without target."""
     monkeypatch.setattr(module, "DAMPING", 1.0)
     settings = dict(settings)
     if settings.pop("dead", 0):
         settings["dead_time"] = DeadTime(0.4 * PERIOD)
     likelihood = acquire(seed, (1, columns), **settings)
-    evidence, (scene, given) = states(likelihood), law(likelihood)
+    (evidence, absent), (scene, given) = states(likelihood), law(likelihood)
     belief = depth_belief(likelihood)
-    found = np.column_stack([listed(belief, belief.probability), belief.absent.ravel()])
+    assert belief.lattice.levels == 1  # whether there is a target is asked on these bins, too
+    found = listed(belief, belief.probability)
+    assert np.isfinite(found).all()
+    odds = np.empty(columns)
     for root in range(columns):
-        expected = enumerated(evidence, scene, given, line(root, list(range(columns))), root)
-        np.testing.assert_allclose(found[root], expected, rtol=1e-4, atol=1e-7)
+        chain = line(root, list(range(columns)))
+        with_all = enumerated(evidence, scene, given, chain, root)
+        np.testing.assert_allclose(found[root], with_all / with_all.sum(), rtol=1e-4, atol=1e-7)
+        others = evidence.copy()
+        others[root] = 1.0
+        without = enumerated(others, scene, given, chain, root)
+        odds[root] = with_all.sum() / without.sum() / absent[root]
+    two_states = np.column_stack([odds, np.ones(columns)])
+    for root in range(columns):
+        expected = enumerated(two_states, *presence(), line(root, list(range(columns))), root)
+        assert belief.absent[0, root] == pytest.approx(expected[1] / expected.sum(), rel=1e-4)
 
 
 @pytest.mark.parametrize("seed", SEEDS)
@@ -127,32 +152,62 @@ def test_a_small_image_is_covered_by_two_trees(monkeypatch, unpruned, seed, shap
     """Rows with the columns that hang off them, columns with the rows; their geometric mean."""
     monkeypatch.setattr(module, "DAMPING", 1.0)
     likelihood = acquire(seed, shape, rms=0.25 * PERIOD)
-    evidence, (scene, given) = states(likelihood), law(likelihood)
+    (evidence, _), (scene, given) = states(likelihood), law(likelihood)
     belief = depth_belief(likelihood)
-    found = np.column_stack([listed(belief, belief.probability), belief.absent.ravel()])
-    rows, columns = shape
-    index = np.arange(rows * columns).reshape(shape)
-    for i, j in itertools.product(range(rows), range(columns)):
-        of_row = line(j, list(index[i]))
-        for k in range(columns):
-            of_row += line(i, list(index[:, k]))
-        of_column = line(i, list(index[:, j]))
-        for k in range(rows):
-            of_column += line(j, list(index[k]))
-        both = [enumerated(evidence, scene, given, edges, index[i, j]) for edges in (of_row, of_column)]
+    found = listed(belief, belief.probability)
+    for root, (i, j) in enumerate(itertools.product(*map(range, shape))):
+        both = [enumerated(evidence, scene, given, edges, root) for edges in two_trees(shape, i, j)]
         expected = np.sqrt(both[0] * both[1])
-        np.testing.assert_allclose(found[index[i, j]], expected / expected.sum(), rtol=1e-4, atol=1e-7)
+        np.testing.assert_allclose(found[root], expected / expected.sum(), rtol=1e-4, atol=1e-7)
 
 
 def test_damping_takes_messages_to_a_power(unpruned):
     """In a row of two a message comes from the neighbour's own tags alone."""
     likelihood = acquire(5, (1, 2))
-    evidence, (scene, given) = states(likelihood), law(likelihood)
+    (evidence, absent), (scene, given) = states(likelihood), law(likelihood)
     belief = depth_belief(likelihood)
-    found = np.column_stack([listed(belief, belief.probability), belief.absent.ravel()])
+    found = listed(belief, belief.probability)
+    odds = np.empty(2)
     for root in range(2):
-        expected = scene * evidence[root] * (given @ evidence[1 - root]) ** module.DAMPING
+        others = scene * (given @ evidence[1 - root]) ** module.DAMPING
+        expected = others * evidence[root]
         np.testing.assert_allclose(found[root], expected / expected.sum(), rtol=1e-4, atol=1e-7)
+        odds[root] = expected.sum() / others.sum() / absent[root]
+    prior, given = presence()
+    for root in range(2):
+        there, not_there = given @ [odds[1 - root], 1.0]
+        against = prior[1] / prior[0] / odds[root] * (not_there / there) ** module.DAMPING
+        assert belief.absent[0, root] == pytest.approx(against / (1.0 + against), rel=1e-4)
+
+
+def invented_odds(seed, size):
+    """From twenty e-folds for a target to twenty against it."""
+    return np.exp(np.random.default_rng(seed).uniform(-20.0, 20.0, size) * [*[0.1] * (size - 2), 1.0, 1.0])
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+@pytest.mark.parametrize("shape", [(1, 12), (12, 1), (3, 4), (4, 3)])
+def test_absence_by_enumeration_of_two_states(monkeypatch, seed, shape):
+    """A line of pixels is a chain; an image is the geometric mean of its two trees."""
+    monkeypatch.setattr(module, "DAMPING", 1.0)
+    odds = invented_odds(seed, 12)
+    found = module._absence(odds.astype(np.float32), shape)
+    assert found.shape == shape
+    evidence = np.column_stack([odds, np.ones(12)])
+    for root, (i, j) in enumerate(itertools.product(*map(range, shape))):
+        both = [enumerated(evidence, *presence(), edges, root) for edges in two_trees(shape, i, j)]
+        expected = np.sqrt(both[0] * both[1])
+        assert found[i, j] == pytest.approx(expected[1] / expected.sum(), rel=2e-4, abs=1e-12)
+
+
+def test_absence_of_pixels_alone():
+    """Bayes' rule; and odds beyond what float32 holds are certain, not NaN."""
+    for odds in (1e-30, 1e-3, 1.0, 1e3, 1e12):
+        expected = module.LEAVE / (module.LEAVE + module.COME * odds)
+        found = module._absence(np.array([odds], np.float32), (1, 1))
+        assert found[0, 0] == pytest.approx(expected, rel=1e-4)
+    sure = module._absence(np.array([np.inf, 1e-30, np.inf, 1e-30], np.float32), (2, 2))
+    np.testing.assert_allclose(sure, [[0.0, 1.0], [0.0, 1.0]], atol=1e-6)
 
 
 @pytest.mark.parametrize("seed", SEEDS)
@@ -160,9 +215,10 @@ def test_probabilities_quantiles_and_masses(seed):
     likelihood = acquire(seed, (9, 11), rms=0.3e-9)
     belief = depth_belief(likelihood)
     full, width = listed(belief, belief.probability), belief.lattice.width
-    np.testing.assert_allclose(full.sum(axis=1) + belief.absent.ravel(), 1.0, rtol=1e-5)
+    np.testing.assert_allclose(full.sum(axis=1), 1.0, rtol=1e-5)
     assert full.min() >= 0.0
     assert belief.absent.min() >= 0.0
+    assert belief.absent.max() <= 1.0
     edges = width * np.arange(full.shape[1] + 1)
     assert edges[-1] == pytest.approx(RANGE, rel=1e-12)
     share = np.pad(np.cumsum(full, axis=1), ((0, 0), (1, 0)))
@@ -222,8 +278,8 @@ def written_out(likelihood, pixel, z, dead=None, gate=None):
     y = likelihood.y[likelihood.start[pixel] : likelihood.start[pixel + 1]]
     noise, weight = likelihood.noise.ravel()[pixel], trust(likelihood).ravel()[pixel]
     late = np.subtract.outer(y, z)
-    late -= RANGE * np.round(late / RANGE)
-    p = np.exp(-0.5 * (late / rms) ** 2) / (rms * np.sqrt(2.0 * np.pi))
+    late = late + RANGE * np.arange(-2, 3)[:, None, None]
+    p = np.exp(-0.5 * (late / rms) ** 2).sum(axis=0) / (rms * np.sqrt(2.0 * np.pi))
     exponent = weight * np.log1p(p / noise).sum(axis=0)
     expected = weight * (likelihood.signal * likelihood.trials).ravel()[pixel]
     lost = np.zeros(z.size)
@@ -253,7 +309,27 @@ def test_the_evidence_of_a_pixel_is_the_mean_over_a_bin(monkeypatch, seed, level
     dead, gate = case.pop("dead", None), case.get("gate")
     if dead is not None:
         case["dead_time"] = DeadTime(dead)
-    likelihood = acquire(seed, (2, 4), rms=1e-9, trials=20 if dead else 100, **case)
+    compare(acquire(seed, (2, 4), rms=1e-9, trials=20 if dead else 100, **case), level, dead, gate)
+
+
+@pytest.mark.xfail(
+    strict=True,
+    reason="where the taps reach further than the period, losses are read beyond the array",
+)
+def test_the_evidence_of_a_long_pulse_with_dead_time(monkeypatch):
+    monkeypatch.setattr(module, "PHASES", 240)
+    for seed in SEEDS:
+        compare(acquire(seed, (2, 4), trials=9, dead_time=DeadTime(15e-9)), 0, 15e-9, None)
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+def test_the_evidence_of_a_long_pulse(monkeypatch, seed):
+    monkeypatch.setattr(module, "PHASES", 240)
+    compare(acquire(seed, (2, 4)), 0, None, None)
+
+
+def compare(likelihood, level, dead, gate):
+    """Hold the evidence of eight pixels to what is written out."""
     lattice = depth_lattice(likelihood)
     bins, size = lattice.scene[0].size, lattice.scene[level].size
     first, place = np.arange(9) * size, np.tile(np.arange(size, dtype=np.int32), 8)
@@ -269,6 +345,7 @@ def test_the_evidence_of_a_pixel_is_the_mean_over_a_bin(monkeypatch, seed, level
         slack = 0.06 * tags + (0.03 * expected if dead or gate else 0.0) + 1e-4
         strong = wanted > 1e-9 * wanted.max()
         off = np.log(found[strong] / found.max()) - np.log(wanted[strong] / wanted.max())
+        assert np.isfinite(found).all()
         assert np.abs(off).max() < slack
 
 
@@ -281,10 +358,6 @@ def test_pixels_that_tell_nothing_keep_the_law_of_the_scene(unpruned):
     np.testing.assert_allclose(belief.depth, 0.5 * RANGE, rtol=1e-3)
 
 
-@pytest.mark.xfail(
-    strict=True,
-    reason="a flat law loses the bins beyond the first 24 of a level, and their share to `absent`",
-)
 def test_bins_left_out_do_not_speak_against_a_target():
     belief = depth_belief(DetectionTimes(nothing(), 0.0))
     share = module.LEAVE / (module.LEAVE + module.COME)

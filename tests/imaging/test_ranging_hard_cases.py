@@ -8,11 +8,14 @@ from scipy import constants
 
 import priors
 import recon
-from priors import PriorError
 from recon.acquisition import DeadTime, GaussianPulse, SampledPulse, TimeHistogram, TimeTags
 from recon.diagnostics import Status
 from recon.errors import InputError
+from recon.imaging.background_check import allowed_background
+from recon.imaging.depth import depth
 from recon.imaging.depth_belief import depth_belief
+from recon.imaging.reflectivity import reflectivity
+from recon.imaging.task import Effort
 from recon.likelihoods import DetectionTimes
 from recon.simulate import time_tags
 
@@ -44,9 +47,9 @@ def acquire(
     )
 
 
-def images(acquisition, prior=None, max_iterations=300):
+def images(acquisition, prior=None, max_iterations=300, weight="rule"):
     """The images, held to what is always true of them."""
-    result = recon.reconstruct(acquisition, prior, max_iterations=max_iterations)
+    result = recon.reconstruct(acquisition, prior, max_iterations=max_iterations, weight=weight)
     for image in (result.depth, result.reflectivity):
         assert image.image.shape == acquisition.shape
         assert np.isfinite(image.image).all()
@@ -75,7 +78,7 @@ def off(result, scene=None):
 
 @pytest.mark.parametrize("prior", [None, priors.TotalVariation(), priors.GeneralizedVariation()])
 def test_two_planes(prior):
-    result = images(acquire(1), prior)
+    result = images(acquire(1), prior, weight="auto")
     assert off(result).mean() < 0.3 * CORE
     assert result.depth.target.mean() > 0.95
     assert result.reflectivity.image.mean() == pytest.approx(1.0, abs=0.1)
@@ -96,15 +99,15 @@ def test_empty_pixels_rows_and_a_dead_column():
     assert result.depth.target[~dead].mean() > 0.9
 
 
-@pytest.mark.xfail(
-    strict=True, raises=PriorError, reason="without target is then certain, and the median of nothing is NaN"
-)
 def test_a_dead_pixel_in_a_bright_scene():
     """It lacks two hundred tags, though it is taken for no brighter than a tenth of the mean."""
     dead = np.zeros(SHAPE, bool)
     dead[11, 9] = True
     result = images(acquire(2, signal=2000.0, dead=dead))
-    assert off(result)[~dead].mean() < 0.1 * CORE
+    assert off(result).max() < 0.1 * CORE
+    assert result.depth.filled[11, 9]
+    assert result.depth.target[11, 9] < 0.01
+    assert result.depth.target[~dead].min() > 0.99
 
 
 def test_a_masked_region():
@@ -144,12 +147,15 @@ def cut_by_the_gate():
 def test_a_gate_that_cuts_the_pulse():
     scene, tags = cut_by_the_gate()
     result = images(tags)
-    assert off(result, scene).mean() < CORE
-    assert 0.6 < result.reflectivity.image.mean() < 1.1
+    assert off(result, scene).mean() < 0.4 * CORE
+    assert 0.7 < result.reflectivity.image.mean() < 1.1
+    quick = Effort(max_iterations=300, weight="rule")
+    once = depth(tags, reflectivity(tags.counts(), effort=quick).image, effort=quick)
+    assert off(result, scene).mean() < 0.7 * np.abs(once.image - scene).mean()
 
 
 @pytest.mark.xfail(
-    strict=True, reason="the first reflectivity takes the pulse for whole, so depth moves half a core inwards"
+    strict=True, reason="depth is still 0.27 of a core inwards after two rounds, reflectivity 0.81"
 )
 def test_a_gate_that_cuts_the_pulse_biases_nothing():
     scene, tags = cut_by_the_gate()
@@ -170,17 +176,23 @@ def test_a_return_at_the_edge_of_the_period(place):
     assert error.mean() < CORE
 
 
-NOT_TOLD = (
-    "a first reflectivity near 0 leaves a target of a twentieth of a detection, which no tag speaks against"
-)
+NOT_TOLD = "a first reflectivity near 0 leaves a target so faint that few missing tags speak against it"
+
+
+@pytest.mark.parametrize("background", [0.5, 3.0])
+@pytest.mark.parametrize("seed", [7, 8, 9])
+def test_no_target_anywhere_is_dark(background, seed):
+    result = images(acquire(seed, reflectivity=np.zeros(SHAPE), background=background))
+    assert result.reflectivity.image.mean() < 0.15
 
 
 @pytest.mark.xfail(strict=True, reason=NOT_TOLD)
 @pytest.mark.parametrize("background", [0.5, 3.0])
-def test_no_target_anywhere(background):
-    result = images(acquire(7, reflectivity=np.zeros(SHAPE), background=background))
-    assert np.median(result.depth.target) < 0.2
-    assert result.reflectivity.image.mean() < 0.3
+def test_no_target_anywhere_is_told(background):
+    """With every seed: with one of them, at background 3, it is told."""
+    for seed in (7, 8, 9):
+        result = images(acquire(seed, reflectivity=np.zeros(SHAPE), background=background))
+        assert np.median(result.depth.target) < 0.2
 
 
 def half_empty():
@@ -231,14 +243,7 @@ def test_one_tag():
     assert result.depth.image[5, 6] == pytest.approx(4.0, abs=CORE)
 
 
-TOO_HIGH = (
-    "the first reflectivity falls to a hundredth of the true one, and with it what depth makes of the tags"
-)
-
-
-@pytest.mark.parametrize(
-    "factor", [0.5, pytest.param(2.0, marks=pytest.mark.xfail(strict=True, reason=TOO_HIGH))]
-)
+@pytest.mark.parametrize("factor", [0.5, 2.0, 3.0])
 def test_a_wrong_background_degrades_gently(factor):
     errors = []
     for seed in range(3):
@@ -253,6 +258,35 @@ def test_a_background_too_high_keeps_the_surfaces():
     tags = acquire(1)
     result = images(replace(tags, background=2.0 * tags.background))
     assert off(result).max() < 3.0 * CORE
+    assert result.reflectivity.image.mean() == pytest.approx(1.0, abs=0.1)
+
+
+@pytest.mark.parametrize("factor", [2.0, 3.0])
+@pytest.mark.parametrize("seed", range(3))
+def test_a_background_too_high_is_told(seed, factor):
+    """Two detections in a thousand trials are true; the check speaks of what was declared."""
+    tags = acquire(seed)
+    surface = images(replace(tags, background=factor * tags.background)).depth
+    assert any("times the declared background was taken" in note for note in surface.notes)
+    assert surface.background.declared == pytest.approx(0.002 * factor)
+    assert surface.background.found == pytest.approx(0.002, abs=4.0 * surface.background.standard_error)
+    assert not surface.background.fits
+
+
+@pytest.mark.parametrize("background", [100.0, 400.0])
+def test_much_background_that_is_right_is_left_alone(background):
+    for seed in range(10):
+        assert allowed_background(acquire(seed, background=background)) > 0.97
+
+
+@pytest.mark.xfail(
+    strict=True,
+    reason="the quietest fifth of few tags is quiet by chance: 0.8 to 0.9 of the right background is taken",
+)
+@pytest.mark.parametrize("background", [0.5, 2.0])
+def test_little_background_that_is_right_is_left_alone(background):
+    taken = [allowed_background(acquire(seed, background=background)) for seed in range(40)]
+    assert np.mean(np.array(taken) < 0.9) < 0.05
 
 
 def test_a_pulse_with_a_tail():
