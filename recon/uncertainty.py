@@ -6,6 +6,8 @@ import numpy as np
 
 from recon.likelihoods.contract import Likelihood
 
+CLOSE = 1e-4  # relative change at which the uncertainty has settled
+
 
 def local_uncertainty(likelihood: Likelihood, image: np.ndarray, bounds: tuple[float, float]) -> np.ndarray:
     """Return the standard uncertainty u of each pixel from its own data alone (float32).
@@ -24,6 +26,9 @@ def local_uncertainty(likelihood: Likelihood, image: np.ndarray, bounds: tuple[f
         level = np.full(x.shape, float(np.mean(x)))
         u = np.nan_to_num(1.0 / np.sqrt(likelihood.fisher_information(level)), posinf=0.0)
         for _ in range(30):  # a contraction by a half or better for counting laws
+            before = u
             u = np.nan_to_num(1.0 / np.sqrt(likelihood.fisher_information(x + u)), posinf=widest)
+            if np.all(np.abs(u - before) <= CLOSE * u):
+                break
     u = np.where(seen, np.minimum(u, widest), widest)
     return u.astype(np.float32)

@@ -159,7 +159,7 @@ def _reconstruct(commands: argparse._SubParsersAction, common: argparse.Argument
         "--tolerance",
         metavar="T",
         type=_real,
-        help="relative gap of objective and dual value to stop at, in (0, 1) (default: 1e-4, depth 1e-2)",
+        help="relative gap of objective and dual value to stop at, in (0, 1) (default: 5e-4, depth 1e-2)",
     )
     command.add_argument(
         "--max-iterations",

@@ -19,6 +19,7 @@ from recon.weights import settle
 
 TRENDED = 16  # frames from which on a trend over the dwell is looked for
 UNLIKELY = 1e-3  # chance of a trend by accident below which a note says so
+ROUGHLY = 3.0  # standard deviations of a first look, beyond which a second is taken
 SATURATED = 1e-3  # share of readings at the ceiling from which on a note says so
 
 
@@ -131,12 +132,27 @@ def _ratio(frames: Frames) -> Likelihood:
     return Poisson.from_arrays(electrons, np.where(usable, total_dose(frames), 0.0), 0.0, usable)
 
 
+def _changes(frames: Frames) -> bool:
+    """Whether the electrons of the frames vary more than they should, or rise or fall; quick, and rough."""
+    if frames.current is not None:
+        return True
+    usable = np.ones(frames.shape, bool) if frames.mask is None else frames.mask
+    electrons = np.array([int(np.sum(frame, where=usable, dtype=np.int64)) for frame in frames.counts])
+    expected = frames.counts.sum(axis=0, dtype=np.int64)[usable] / frames.frames
+    eta = expected / np.broadcast_to(frames.dose, frames.shape)[usable]
+    variance = max(float(np.sum(expected * (1.0 + eta))), 1.0)
+    centred = np.linspace(-1.0, 1.0, frames.frames)
+    slope = (centred @ electrons) / np.sqrt(variance * np.sum(centred**2))
+    spread = (np.var(electrons) / variance - 1.0) * np.sqrt(0.5 * frames.frames)
+    return bool(abs(slope) > ROUGHLY or spread > ROUGHLY)
+
+
 def _notes(frames: Frames) -> Iterator[str]:
     if frames.frames == 1:
         dose = float(np.mean(total_dose(frames)))
         eta = max(float(np.nanmean(conventional_yield(frames).image)), 1e-3)
         yield "a single frame: its counts are taken under the law of the total. " + one_frame_note(dose, eta)
-    if frames.law is None and frames.frames >= TRENDED:
+    if frames.law is None and frames.frames >= TRENDED and _changes(frames):
         from recon.imaging.yield_trend import yield_trend
 
         trend = yield_trend(frames)

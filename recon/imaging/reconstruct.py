@@ -34,7 +34,7 @@ def reconstruct(
         priors.GeneralizedVariation(). Total variation if left out, for depth generalized variation. A weight
         that is left out is chosen from the data, see weight.
     reflectivity_prior: the prior of the reflectivity image beside a depth image; total variation if left out.
-    tolerance: see `recon.solve`; 1e-4 if left out, for depth 1e-2.
+    tolerance: see `recon.solve`; 5e-4 if left out, for depth 1e-2.
     max_iterations: see `recon.solve`.
     weight: how weights that the priors leave open are set: "auto" = the one that predicts held-out data best
         (`recon.weights`; that of depth by the rule of thumb), "rule" = a rule of thumb for the data.

@@ -15,7 +15,7 @@ from recon.uncertainty import local_uncertainty
 from recon.weights import settle
 from recon.weights.settle import Pairs
 
-TOLERANCE = 1e-4  # where the user gives none
+TOLERANCE = 5e-4  # where the user gives none; single precision can end above 1e-4 on large images
 
 
 @dataclass(frozen=True)

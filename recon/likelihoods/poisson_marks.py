@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+import math
 from functools import cached_property
 
 import numpy as np
+from scipy.interpolate import CubicSpline
 
 from recon.acquisition.frames import Frames
 from recon.errors import InputError
@@ -17,6 +19,9 @@ from recon.likelihoods.neyman_estimate import best_yield
 from recon.likelihoods.neyman_information import line_classes, stack_information
 from recon.likelihoods.poisson import Poisson
 from recon.validation import NONNEGATIVE, refuse
+
+_FEW = 4096  # pixels below which a spline does not pay
+_NODES = 64  # of it, for a factor e of yield
 
 
 class PoissonMarks(Likelihood):
@@ -101,9 +106,19 @@ class PoissonMarks(Likelihood):
         shown = self._has_data & np.isfinite(eta)
         out = np.where(self._has_data, np.nan, 0.0)
         if shown.any():
-            inside = np.where(shown, eta, eta[shown].min())
-            out[shown] = stack_information(inside, self._lam, self._lines)[shown]
+            out[shown] = self._information(np.where(shown, eta, eta[shown].min()))[shown]
         return out
+
+    def _information(self, eta: np.ndarray) -> np.ndarray:
+        """Return the Fisher information; of many pixels with the same dose, by a spline in log eta."""
+        same = np.ptp(self._lam) == 0.0 and all(line is self._lines[0] for line in self._lines)
+        low, high = float(eta.min()), float(eta.max())
+        if not same or eta.size < _FEW or low <= 0.0 or low == high:
+            return stack_information(eta, self._lam, self._lines)
+        nodes = np.geomspace(low, high, max(33, math.ceil(_NODES * math.log(high / low))))
+        dose = np.full((1, nodes.size), self._lam[0, 0])
+        known = stack_information(nodes[None], dose, self._lines[:1])[0]
+        return np.exp(CubicSpline(np.log(nodes), np.log(known))(np.log(eta)))
 
     def residuals(self, x: np.ndarray) -> np.ndarray:
         """See `Likelihood.residuals`; positive where the likelihood rises with the yield."""

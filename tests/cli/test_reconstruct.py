@@ -37,7 +37,7 @@ def test_diagnostics_hold_the_certificate_and_the_error(run, counts_file, tmp_pa
     image = written["images"]["reflectivity"]
     assert image["objective"] == result.diagnostics.objective
     assert image["dual_value"] == result.diagnostics.dual_value
-    assert image["relative_gap"] == result.diagnostics.relative_gap <= image["tolerance"] == 1e-4
+    assert image["relative_gap"] == result.diagnostics.relative_gap <= image["tolerance"] == 5e-4
     assert image["trace"]["relative_gap"] == list(result.diagnostics.trace.relative_gap)
     assert image["trace"]["iteration"][-1] == image["iterations"]
     assert image["priors"] == [prior_record("total-variation", result.priors[0].weight)]

@@ -312,10 +312,6 @@ def test_the_evidence_of_a_pixel_is_the_mean_over_a_bin(monkeypatch, seed, level
     compare(acquire(seed, (2, 4), rms=1e-9, trials=20 if dead else 100, **case), level, dead, gate)
 
 
-@pytest.mark.xfail(
-    strict=True,
-    reason="where the taps reach further than the period, losses are read beyond the array",
-)
 def test_the_evidence_of_a_long_pulse_with_dead_time(monkeypatch):
     monkeypatch.setattr(module, "PHASES", 240)
     for seed in SEEDS:
