@@ -176,8 +176,6 @@ def test_a_return_at_the_edge_of_the_period(place):
     assert error.mean() < CORE
 
 
-
-
 @pytest.mark.parametrize("background", [0.5, 3.0])
 @pytest.mark.parametrize("seed", [7, 8, 9])
 def test_no_target_anywhere_is_dark(background, seed):
