@@ -52,7 +52,7 @@ class SolveProgress:
 
     def __call__(self, name: str, state: State) -> None:
         """Show a state of the solve of an image."""
-        if name not in self._tasks:
+        if self._now is None or self._tasks.get(name) != self._now:  # an image may be solved for again
             self._finish()
             self._first[name] = state.relative_gap
             self._tasks[name] = self._now = self._bars.add_task(spelled(name), total=1.0, gap="")

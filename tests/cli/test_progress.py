@@ -40,3 +40,10 @@ def test_a_terminal_shows_image_gap_and_iteration(monkeypatch):
         shown("electron_yield", State(40, np.zeros((2, 2)), 1.0, 0.9, 1e-2))
     for words in ("electron yield", "gap 1.0e-02 of 1e-04", "iteration 40"):
         assert words in screen.getvalue()
+
+
+def test_an_image_may_be_solved_for_again() -> None:
+    with progress.SolveProgress(1e-4) as shown:
+        for name in ("depth", "reflectivity", "depth", "depth"):
+            shown(name, State(10, np.zeros((2, 2)), 1.0, 0.5, 0.5))
+            shown(name, State(20, np.zeros((2, 2)), 1.0, 0.9, 0.1))
