@@ -66,7 +66,7 @@ def coupon() -> Iterator[Row]:
 
     ours, weight = _best(marks, family, truth, (1.0, 1.2, 1.4))
     yield at_least(GROUP, "coupon, conventional over best", plain / ours, "x", 8.0, f"weight {weight}")
-    other, at = _best(total, family, truth, (0.9, 1.2, 1.6, 2.2))
+    other, at = _best(total, family, truth, (1.6, 2.2, 3.0, 4.0))
     detail = f"mean squared error {ours:.4f} against {other:.4f} at weight {at}"
     yield at_most(GROUP, "coupon, over the prior on the ratio", ours / other, "x", 0.6, detail)
     chosen = electron_yield(frames)
