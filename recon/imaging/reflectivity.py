@@ -15,15 +15,36 @@ from recon.likelihoods.range_pulse import RangePulse
 from recon.problem import Prior, Sum
 
 INSIDE = 0.98  # share of the pulse that the gate round a return holds
+MANY = 30  # pixels from which on a record can look like waiting
 SLACK = 1.0  # of the pulse's core, added to the gate for the error of the depth
 
 
 def counting_likelihood(counts: Counts) -> Likelihood:
     """Return the law of the counts: Poisson where one trial can detect several times, else Bernoulli trials.
 
-    The rule of stopping does not matter to the image; see `BernoulliTrials`.
+    The rule of stopping does not matter to the image, see `BernoulliTrials`, but to how data may be held
+    out: it is taken from the record (`stopping_rule`).
     """
-    return Poisson(counts) if counts.several_per_trial else BernoulliTrials(counts)
+    return Poisson(counts) if counts.several_per_trial else BernoulliTrials(counts, *stopping_rule(counts))
+
+
+def stopping_rule(counts: Counts) -> tuple[int | None, int | None]:
+    """Return (detections waited for, most trials), each None if the record does not look like it.
+
+    A record of waiting has the same number of detections in every pixel, after different numbers of
+    trials; fewer only where the largest number of trials was made. That many pixels look so by chance is
+    out of the question.
+    """
+    if isinstance(counts.trials, float):
+        return None, None
+    usable = np.asarray(counts.exposure) > 0.0
+    k, n = counts.detections[usable], counts.trials[usable]
+    wanted, most = int(k.max()), int(n.max())
+    reached = k == wanted
+    alike = np.all(reached | (n == most)) and 2 * np.count_nonzero(reached) > k.size
+    if k.size < MANY or wanted < 1 or not alike or np.ptp(n[reached]) == 0:
+        return None, None
+    return wanted, None if reached.all() else most
 
 
 def reflectivity(

@@ -238,6 +238,11 @@ class BernoulliTrials(Likelihood):
         """See `Likelihood.can_be_shared_out`."""
         return float(self._count.sum(dtype=np.float64)) >= LEAST_SHARED
 
+    @property
+    def scores_by_distance(self) -> bool:
+        """See `Likelihood.scores_by_distance`."""
+        return self._stop_after is None
+
     def score_map(self, x: np.ndarray) -> np.ndarray:
         """Return the squared distance between k/n and its expectation, over that of gain, 0 without data.
 

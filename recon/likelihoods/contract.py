@@ -126,9 +126,14 @@ class Likelihood(ABC):
 
         In expectation it is least, over all images, at the truth. This default is `value_map`, the
         predictive log-likelihood; where there is an unbiased estimate of the image it is the squared
-        distance from that, which does not let the few detections of dark regions decide.
+        distance from that, and `scores_by_distance` is True.
         """
         return self.value_map(x)
+
+    @property
+    def scores_by_distance(self) -> bool:
+        """Whether `score_map` is in squares of the image's unit; if not, it is in nats."""
+        return False
 
     # Convex likelihoods ------------------------------------------------------------------------
 

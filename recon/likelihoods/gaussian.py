@@ -169,6 +169,11 @@ class Gaussian(Likelihood):
             )
         return pairs
 
+    @property
+    def scores_by_distance(self) -> bool:
+        """See `Likelihood.scores_by_distance`."""
+        return True
+
     def score_map(self, x: np.ndarray) -> np.ndarray:
         """Return (x - reading)^2, 0 without data."""
         distance = np.asarray(x, np.float64) - self._target

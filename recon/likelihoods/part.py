@@ -49,6 +49,11 @@ class PixelPart(Likelihood):
         """See `Likelihood.value_map`."""
         return self._masked(self.whole.value_map(x))
 
+    @property
+    def scores_by_distance(self) -> bool:
+        """See `Likelihood.scores_by_distance`."""
+        return self.whole.scores_by_distance
+
     def score_map(self, x: np.ndarray) -> np.ndarray:
         """See `Likelihood.score_map`."""
         return self._masked(self.whole.score_map(x))

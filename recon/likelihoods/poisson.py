@@ -161,6 +161,11 @@ class Poisson(Likelihood):
         """See `Likelihood.can_be_shared_out`."""
         return float(self._count.sum(dtype=np.float64)) >= LEAST_SHARED
 
+    @property
+    def scores_by_distance(self) -> bool:
+        """See `Likelihood.scores_by_distance`."""
+        return True
+
     def score_map(self, x: np.ndarray) -> np.ndarray:
         """Return (x - (count / slope - offset))^2, 0 without data."""
         with np.errstate(divide="ignore", invalid="ignore"):

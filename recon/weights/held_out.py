@@ -2,9 +2,9 @@
 
 The data are shared out into folds (`Likelihood.folds`). For each weight, every fold's image is fitted to the
 other folds, and its own part scores it (Stone 1974): by the squared distance from an unbiased estimate, which
-is the mean squared error but for a constant, or by the predictive log-likelihood where there is none
-(`Likelihood.score_map`). Weights are factors of the rule of thumb, which knows how the weight grows with the
-data, so a factor found on a share of the data holds for all of them.
+is the mean squared error but for a constant, or, where there is none, by the predictive log-likelihood over
+the information of the pixel (`Likelihood.score_map`). Weights are factors of the rule of thumb, which knows
+how the weight grows with the data, so a factor found on a share of the data holds for all of them.
 """
 
 from __future__ import annotations
@@ -72,6 +72,7 @@ class _Path:
     callback: Callable[[float], object] | None
     images: dict[float, list[np.ndarray]] = field(default_factory=dict)
     scores: dict[float, list[np.ndarray]] = field(default_factory=dict)
+    pilots: list[np.ndarray | float] = field(default_factory=list)
 
     def at(self, factor: float, second_order: float | None = None) -> float:
         """Return the held-out score at a factor, fitting if that has not been done."""
@@ -82,9 +83,11 @@ class _Path:
             images = [self._fit(i, factor, second_order) for i in range(len(self.folds))]
             if second_order is None:
                 self.images[factor] = images
+            if not self.pilots:
+                self.pilots = [_pilot(fold, image) for fold, image in zip(self.folds, images, strict=True)]
             self.scores[key] = [
-                fold.score.score_map(np.maximum(image, FLOOR * max(float(image.mean()), 0.0)))
-                for fold, image in zip(self.folds, images, strict=True)
+                pilot * fold.score.score_map(_above_zero(image))
+                for fold, image, pilot in zip(self.folds, images, self.pilots, strict=True)
             ]
         return sum(float(np.sum(part)) for part in self.scores[key])
 
@@ -103,6 +106,25 @@ class _Path:
         apart = [a - b for a, b in zip(self.scores[one], self.scores[other], strict=True)]
         square = sum(float(np.sum((d - d.mean()) ** 2)) for d in apart)
         return sum(float(d.sum()) for d in apart), math.sqrt(square)
+
+
+def _above_zero(image: np.ndarray) -> np.ndarray:
+    return np.maximum(image, FLOOR * max(float(image.mean()), 0.0))
+
+
+def _pilot(fold: Fold, image: np.ndarray) -> np.ndarray | float:
+    """Return what a pixel's predictive log-likelihood counts for: 1 over its information at a first fit.
+
+    Near the truth a log-likelihood is half the information times the squared distance, so that this makes
+    it a squared distance, whatever the pixel; and weights that come from other data favour no image.
+    """
+    if fold.score.scores_by_distance:
+        return 1.0
+    information = fold.score.fisher_information(_above_zero(image))
+    seen = fold.score.has_data & np.isfinite(information) & (information > 0.0)
+    weight = np.zeros(image.shape)
+    weight[seen] = 1.0 / information[seen]
+    return weight
 
 
 def at_factor(
