@@ -221,7 +221,8 @@ class BernoulliTrials(Likelihood):
         record that ends with a detection cannot be shared out: whole pixels are hidden then.
         """
         if self._stop_after is not None or self._n.max() > _MOST_SHARED:
-            return super().folds(number, seed)
+            fold = np.random.default_rng(seed).integers(number, size=self.shape)
+            return [(self._of(fold != f), self._of(fold == f)) for f in range(number)]
         rng = np.random.default_rng(seed)
         n, k = self._n.astype(np.int64), self._k.astype(np.int64)
         offset = rng.integers(number, size=self.shape)
@@ -253,6 +254,10 @@ class BernoulliTrials(Likelihood):
         with np.errstate(divide="ignore", invalid="ignore"):
             distance = (-np.expm1(-self._mu(x)) - self._k / self._n) / self._gain
         return np.where(self._has_data, distance * distance, 0.0)
+
+    def _of(self, shown: np.ndarray) -> BernoulliTrials:
+        """Return the same likelihood of some pixels only."""
+        return self._with(np.where(shown, self._k, 0.0), np.where(shown, self._n, 0.0))
 
     def _with(self, k: np.ndarray, n: np.ndarray) -> BernoulliTrials:
         """Return the same likelihood on other numbers of detections and trials."""
