@@ -21,6 +21,7 @@ tags = recon.simulate.time_tags(flat, flat, 10, 1e-7, recon.GaussianPulse(3e-10)
 times = recon.likelihoods.DetectionTimes(tags, flat.astype(np.float32))
 start = depth_belief(times).depth
 times.value(start), times.fisher_information(start), times.majorise(start), times.signal_tags(start)
+times.gated(start, 0.2)
 frames = recon.simulate.frames(flat, 0.125, 30, seed=0)
 marks = recon.likelihoods.PoissonMarks(frames)
 marks.majorise(marks.estimate()), marks.value(marks.estimate())
