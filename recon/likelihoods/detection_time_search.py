@@ -51,6 +51,23 @@ def best(
                         z[i, j], top[i, j] = best_scanned(tags, mode, core, shape, None)
 
 
+@numba.njit(parallel=True, **COMPILE)
+def best_whole(y, start, noise, used, mode, core, low, step, pieces, period, z, top):
+    """Do what `best` does where no pixel loses exposure; compiled in half the time."""
+    rows, columns = used.shape
+    high = low + step * pieces.shape[0]
+    for i in prange(rows):
+        for j in range(columns):
+            q = i * columns + j
+            if used[i, j] and start[q + 1] > start[q]:
+                tags = y[start[q] : start[q + 1]]
+                shape = (noise[i, j], low, high, step, pieces, period)
+                if tags.size < MANY:
+                    z[i, j], top[i, j] = _best_of(tags, mode, core, shape)
+                else:
+                    z[i, j], top[i, j] = best_scanned(tags, mode, core, shape, None)
+
+
 @numba.njit(**COMPILE)
 def _best_of(tags, mode, core, shape):
     noise, low, _, step, pieces, period = shape

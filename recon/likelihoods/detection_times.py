@@ -121,6 +121,9 @@ class DetectionTimes(Likelihood):
 
         pulse = self.pulse
         depth, excess = np.zeros(self.shape), np.zeros(self.shape)
+        if self.live.is_whole:
+            detection_time_search.best_whole(*self._tags, pulse.mode, pulse.core, *self._table, depth, excess)
+            return depth, excess
         detection_time_search.best(
             *self._tags, self.signal, *self.live.edges, pulse.mode, pulse.core, pulse.low, pulse.step,
             pulse.pieces, pulse.shares, pulse.period, depth, excess,
