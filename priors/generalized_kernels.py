@@ -205,7 +205,7 @@ def penalties(x, v, w_r, w_c, m_r, m_c, inverse_r, inverse_c, bands):
 
 @numba.njit(parallel=True, **COMPILE)
 def excess(pull, w_r, w_c, first):
-    """Turn E' q into what of it is beyond the first-order duals' disc."""
+    """Turn E' q into 1/o times the excess, beyond the disc, of the first-order duals it asks for."""
     rows, columns = pull.shape[1:]
     for i in prange(rows):
         a, b = row(w_r, i), row(w_c, i)

@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from recon.acquisition import Frames
 from recon.errors import InputError
+from recon.imaging.electron_yield import some
 
 _BLOCK = 8  # pixels a side, taken as independent of each other
 
@@ -67,7 +68,7 @@ def held_out_error(
     share = 0.0
     for held in np.array_split(order, folds):
         kept = np.setdiff1d(order, held)
-        image = np.asarray(fit(_part(frames, kept)), np.float64)
+        image = np.asarray(fit(some(frames, kept)), np.float64)
         if image.shape != frames.shape:
             raise InputError(f"fit returns shape {image.shape}; return an image of shape {frames.shape}.")
         bad = usable & ~np.isfinite(image)
@@ -87,12 +88,6 @@ def _standard_error(terms: NDArray, usable: NDArray) -> float:
         rest = np.add.reduceat(rest, np.arange(0, rest.shape[axis], _BLOCK), axis=axis)
     blocks = max(rest.size, 2)
     return float(np.sqrt(np.sum(rest**2) * blocks / (blocks - 1)) / np.count_nonzero(usable))
-
-
-def _part(frames: Frames, kept: NDArray) -> Frames:
-    """Return some of the frames, in the order of the dwell."""
-    current = None if frames.current is None else frames.current[kept]
-    return Frames(frames.counts[kept], frames.dose, frames.mask, law=frames.law, current=current)
 
 
 def _ratio(frames: Frames, chosen: NDArray) -> tuple[NDArray, NDArray]:

@@ -62,7 +62,7 @@ def best_scanned(tags, mode, core, shape, live):
 def _scores(tags, nodes, spacing, shape):
     """Return the sum over tags of log(1 + p / noise) at the nodes, roughly."""
     noise, _, _, step, pieces, _ = shape
-    low, high = _seen(shape)
+    low, high = sight(noise, shape[1], step, pieces, DIM)
     first = math.floor(-high / spacing)
     length = min(math.ceil(-low / spacing) + 2 - first, nodes)
     table = np.zeros((PHASES, length))
@@ -83,12 +83,11 @@ def _scores(tags, nodes, spacing, shape):
 
 
 @numba.njit(**COMPILE)
-def _seen(shape):
-    """Return the ends of the part of the pulse that the table holds."""
-    noise, low, _, step, pieces, _ = shape
+def sight(noise, low, step, pieces, faint):
+    """Return the ends of the part of the pulse that is at least a share `faint` of the noise."""
     first, last = 0, pieces.shape[0]
-    while first < last and math.exp(pieces[first, 0]) < DIM * noise:
+    while first < last and math.exp(pieces[first, 0]) < faint * noise:
         first += 1
-    while last > first and math.exp(pieces[last - 1, 0]) < DIM * noise:
+    while last > first and math.exp(pieces[last - 1, 0]) < faint * noise:
         last -= 1
     return low + step * first, low + step * last

@@ -18,7 +18,7 @@ from recon.kernels import COMPILE
 from recon.likelihoods.detection_time_ascent import FAINT, SPACING, ascend, climb, sums
 from recon.likelihoods.detection_time_kernels import density, locate
 from recon.likelihoods.detection_time_live_search import best_live
-from recon.likelihoods.detection_time_scan import MANY, best_scanned
+from recon.likelihoods.detection_time_scan import MANY, best_scanned, sight
 
 
 @numba.njit(parallel=True, **COMPILE)
@@ -84,7 +84,7 @@ def _best_of(tags, mode, core, shape):
     at, top = ascend(tags, at, core, shape, None)
     if n > 1:
         peak = math.log1p(1.01 * density(mode, low, step, pieces)[0] / noise)  # it may lie between two knots
-        left, right = _sight(noise, low, step, pieces)
+        left, right = sight(noise, low, step, pieces, FAINT)
         spacing = SPACING * core
         last, place = -math.inf, tags[0] - right
         lower = locate(tags, place + left - core, period)
@@ -119,14 +119,3 @@ def _best_of(tags, mode, core, shape):
 def _bar(tags, z, left, right, core, period):
     """Return how many tags can see places within a core of z."""
     return min(locate(tags, z + right + core, period) - locate(tags, z + left - core, period), tags.size)
-
-
-@numba.njit(**COMPILE)
-def _sight(noise, low, step, pieces):
-    """Return the ends of the part of the pulse that stands out of the noise."""
-    first, last = 0, pieces.shape[0]
-    while first < last and math.exp(pieces[first, 0]) < FAINT * noise:
-        first += 1
-    while last > first and math.exp(pieces[last - 1, 0]) < FAINT * noise:
-        last -= 1
-    return low + step * first, low + step * last
