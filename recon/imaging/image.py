@@ -7,8 +7,9 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from recon.acquisition import Counts, Frames, TimeHistogram, TimeTags
 from recon.diagnostics import Diagnostics, Status
-from recon.problem import Prior
+from recon.problem import Prior, Problem
 from recon.weights import Choice
 
 
@@ -20,8 +21,7 @@ class PhysicalImage:
     unit: SI unit, "1" for a ratio.
     uncertainty: float32 standard uncertainty of each pixel, in `unit`.
     filled: boolean map, True where the pixel has no usable data and the prior alone fills it in.
-    priors: the priors used, with their weights.
-    bounds: the bounds used.
+    problem: what was solved: likelihood, priors with their weights, bounds.
     tolerance: the relative gap that was aimed at.
     notes: sentences that a reader should know; often none.
     choice: how the open weights were chosen by held-out data; None if they were not.
@@ -32,24 +32,35 @@ class PhysicalImage:
     unit: str
     uncertainty: np.ndarray
     filled: np.ndarray
-    priors: tuple[Prior, ...]
-    bounds: tuple[float, float]
+    problem: Problem
     tolerance: float
     choice: Choice | None
     notes: tuple[str, ...]
     status: Status
     diagnostics: Diagnostics
 
+    @property
+    def priors(self) -> tuple[Prior, ...]:
+        """The priors used, with their weights."""
+        return self.problem.priors
+
+    @property
+    def bounds(self) -> tuple[float, float]:
+        """The bounds used."""
+        return self.problem.bounds
+
 
 @dataclass(frozen=True, eq=False)
 class Reconstruction:
     """The images an acquisition allows; the others are None.
 
+    acquisition: what they were made from.
     reflectivity: ratio, from counts or time tags.
     depth: range in metres, from time tags.
     electron_yield: detected secondary electrons per primary particle, from frames.
     """
 
+    acquisition: Counts | TimeTags | TimeHistogram | Frames
     reflectivity: PhysicalImage | None = None
     depth: PhysicalImage | None = None
     electron_yield: PhysicalImage | None = None

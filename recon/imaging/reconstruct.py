@@ -59,22 +59,22 @@ def reconstruct(
     if isinstance(acquisition, Counts):
         from recon.imaging.reflectivity import reflectivity
 
-        return Reconstruction(reflectivity=reflectivity(acquisition, prior, effort))
+        return Reconstruction(acquisition, reflectivity=reflectivity(acquisition, prior, effort))
     if isinstance(acquisition, Frames):
         from recon.imaging.electron_yield import electron_yield
 
         return Reconstruction(
+            acquisition,
             electron_yield=electron_yield(
                 acquisition, prior, effort, unknown_current=unknown_current, moving=moving
             )
         )
-    if isinstance(acquisition, TimeHistogram):
-        acquisition = acquisition.tags()
-    if isinstance(acquisition, TimeTags):
+    if isinstance(acquisition, TimeTags | TimeHistogram):
         from recon.imaging.ranging import ranging
 
-        brightness, surface = ranging(acquisition, prior, reflectivity_prior, effort)
-        return Reconstruction(reflectivity=brightness, depth=surface)
+        tags = acquisition.tags() if isinstance(acquisition, TimeHistogram) else acquisition
+        brightness, surface = ranging(tags, prior, reflectivity_prior, effort)
+        return Reconstruction(acquisition, reflectivity=brightness, depth=surface)
     raise InputError(
         f"acquisition is a {type(acquisition).__name__}; give recon.Counts, recon.TimeTags,"
         " recon.TimeHistogram or recon.Frames."

@@ -20,7 +20,7 @@ def test_frames_by_themselves_are_electrons_over_primaries(image):
     rng = np.random.default_rng(0)
     mask = np.arange(16)[:, None] > np.zeros(20)
     frames = recon.Frames(rng.poisson(2.0, (5, *mask.shape)), 0.5, mask)
-    alone = pixel_by_pixel(frames, Reconstruction(electron_yield=image))["electron_yield"]
+    alone = pixel_by_pixel(frames, Reconstruction(frames, electron_yield=image))["electron_yield"]
     expected = frames.counts.sum(axis=0) / 2.5
     np.testing.assert_allclose(alone[1:], expected[1:], rtol=1e-6)
     assert np.isnan(alone[0]).all()

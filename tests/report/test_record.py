@@ -47,7 +47,8 @@ def test_an_image_is_described(image):
 
 def test_priors_say_whether_they_have_edge_weights(image):
     plain, weighted = priors.TotalVariation(2.0), priors.TotalVariation(3.0, edge_weights=np.ones((16, 20)))
-    record = image_record(replace(image, priors=(plain, weighted)))
+    problem = recon.Problem(image.problem.likelihood, [plain, weighted])
+    record = image_record(replace(image, problem=problem))
     said = words.priors_in_words(record)
     assert said == "total variation, weight 2 + total variation with edge weights, weight 3"
 
