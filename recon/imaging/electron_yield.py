@@ -15,7 +15,8 @@ from recon.likelihoods.contract import Likelihood
 from recon.likelihoods.gaussian import Gaussian
 from recon.likelihoods.poisson import Poisson
 from recon.problem import Prior, Sum, default_prior
-from recon.weights import settle
+from recon.uncertainty import calibrated_uncertainty
+from recon.weights import held_out_fits, settle
 
 TRENDED = 16  # frames from which on a trend over the dwell is looked for
 UNLIKELY = 1e-3  # chance of a trend by accident below which a note says so
@@ -77,15 +78,20 @@ def _at_shifts(
     from recon.likelihoods.moving_frames import MovingFrames
 
     still = yield_likelihood(frames)
-    terms, choice = settle(
+    settled = settle(
         default_prior() if prior is None else prior,
         still,
         still.default_bounds,
         effort.weight,
         lambda number, seed: frame_folds(frames, number, seed),
     )
-    image = image_of("electron_yield", MovingFrames(frames, shifts), Sum(*terms), "1", effort, notes=notes)
-    return replace(image, choice=choice)
+    moved, prior = MovingFrames(frames, shifts), Sum(*settled.terms)
+    image = image_of("electron_yield", moved, prior, "1", replace(effort, judge=False), notes=notes)
+    fits = settled.fits or held_out_fits(settled.terms, still, still.default_bounds, image.image)
+    if fits:
+        uncertainty = calibrated_uncertainty(still, image.image, fits, image.bounds)
+        image = replace(image, uncertainty=uncertainty)
+    return replace(image, choice=settled.choice)
 
 
 def yield_likelihood(frames: Frames) -> Likelihood:

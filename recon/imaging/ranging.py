@@ -42,12 +42,12 @@ def ranging(
         taken = replace(tags, background=np.asarray(tags.background) * factor)
         brightness, surface = ranging(taken, depth_prior, reflectivity_prior, effort)
         return brightness, _told(surface, tags, brightness.image, factor)
-    rough = replace(effort, weight="rule")  # what it is for does not need the best weight
+    rough = replace(effort, weight="rule", judge=False)  # what it is for does not need the best weight
     likelihood = counting_likelihood(live_counts(tags))
     first = image_of("first_reflectivity", likelihood, reflectivity_prior, "1", rough)
     surface = depth(tags, first.image, depth_prior, effort)
     for _ in range(ROUNDS if tags.dead_time is not None else tags.gate is not None):
-        brightness = gated_reflectivity(tags, surface.image, reflectivity_prior, effort)
+        brightness = gated_reflectivity(tags, surface.image, reflectivity_prior, replace(effort, judge=False))
         surface = depth(tags, brightness.image, depth_prior, effort)
     return gated_reflectivity(tags, surface.image, reflectivity_prior, effort), surface
 

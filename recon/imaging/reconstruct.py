@@ -67,7 +67,7 @@ def reconstruct(
             acquisition,
             electron_yield=electron_yield(
                 acquisition, prior, effort, unknown_current=unknown_current, moving=moving
-            )
+            ),
         )
     if isinstance(acquisition, TimeTags | TimeHistogram):
         from recon.imaging.ranging import ranging

@@ -72,6 +72,15 @@ class Likelihood(ABC):
     def estimate(self) -> np.ndarray:
         """Return the image that fits each pixel best by itself (float32); the mean where there is no data."""
 
+    def start(self) -> np.ndarray:
+        """Return the image that a solve starts from: `estimate`, or where that can mislead, its mean everywhere.
+
+        Where the likelihood is not convex a pixel can stay where its own data put it, however unlikely its
+        neighbours make that; from a flat image it leaves only as far as its data pull it.
+        """
+        image = self.estimate()
+        return image if self.convex else np.full_like(image, image.mean(dtype=np.float64))
+
     @abstractmethod
     def value_map(self, x: np.ndarray) -> np.ndarray:
         """Return half the deviance of each pixel (float64)."""

@@ -155,6 +155,10 @@ class DetectionTimes(Likelihood):
             image[~self._used] = image[self._used].mean() if self._used.any() else 0.5 * self.pulse.period
         return image
 
+    def start(self) -> np.ndarray:
+        """Return `estimate`: from a flat image most surfaces are out of sight."""
+        return self.estimate()
+
     def value_map(self, z: np.ndarray) -> np.ndarray:
         """See `Likelihood.value_map`."""
         from recon.likelihoods import detection_time_kernels as kernels

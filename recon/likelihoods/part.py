@@ -42,6 +42,10 @@ class PixelPart(Likelihood):
         image, seen = self.whole.estimate(), self.has_data
         return np.where(seen, image, image[seen].mean() if seen.any() else image.mean()).astype(np.float32)
 
+    def start(self) -> np.ndarray:
+        """See `Likelihood.start`."""
+        return self.whole.start()
+
     def _masked(self, values: np.ndarray) -> np.ndarray:
         return np.where(self.shown, values, 0.0)
 

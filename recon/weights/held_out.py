@@ -98,14 +98,18 @@ class _Path:
         if self.images:
             near = min(self.images, key=lambda other: abs(math.log(other / factor)))
             start = self.images[near][index]
-        problem = Problem(fold.fit, terms, fold.bounds)
-        return solve(problem, tolerance=TOLERANCE, max_iterations=LIMIT, start=start).image
+        return fitted(Problem(fold.fit, terms, fold.bounds), start)
 
     def difference(self, one: float, other: float) -> tuple[float, float]:
         """Return the score at one factor less that at another, and its standard error."""
         apart = [a - b for a, b in zip(self.scores[one], self.scores[other], strict=True)]
         square = sum(float(np.sum((d - d.mean()) ** 2)) for d in apart)
         return sum(float(d.sum()) for d in apart), math.sqrt(square)
+
+
+def fitted(problem: Problem, start: np.ndarray | None) -> np.ndarray:
+    """Return the image of a fit to a part of the data."""
+    return solve(problem, tolerance=TOLERANCE, max_iterations=LIMIT, start=start).image
 
 
 def _above_zero(image: np.ndarray) -> np.ndarray:
@@ -141,8 +145,10 @@ def at_factor(
     return scaled
 
 
-def choose(folds: Sequence[Fold], callback: Callable[[float], object] | None = None) -> Choice:
-    """Return the factor with the best held-out score, found by walking downhill from factor 1.
+def choose(
+    folds: Sequence[Fold], callback: Callable[[float], object] | None = None
+) -> tuple[Choice, list[np.ndarray]]:
+    """Return the factor with the best held-out score, found by walking downhill from factor 1, and its fits.
 
     callback: called with every factor that is tried.
     """
@@ -161,7 +167,8 @@ def choose(folds: Sequence[Fold], callback: Callable[[float], object] | None = N
     note = ""
     if at_edge:
         note = f"the best weight is at the end of the path, {best:.3g} times the rule of thumb"
-    return Choice(factor, second, factors, score, error, len(folds), at_edge, note)
+    chosen = Choice(factor, second, factors, score, error, len(folds), at_edge, note)
+    return chosen, path.images[best]
 
 
 def _vertex(factors: np.ndarray, score: np.ndarray, k: int) -> float:

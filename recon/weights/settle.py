@@ -2,15 +2,17 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Sequence
+from dataclasses import dataclass
 
 import numpy as np
 
 from recon.errors import InputError
 from recon.likelihoods.contract import Likelihood
-from recon.problem import Prior, Sum
-from recon.weights.held_out import Choice, Fold, at_factor, choose
-from recon.weights.thumb import weigh
+from recon.problem import Prior, Problem, Sum
+from recon.weights.held_out import Choice, Fold, at_factor, choose, fitted
+from recon.weights.thumb import typical_information, weigh
 
 FOLDS = 3
 SEED = 20_240_517  # of the folds: the same data give the same weight
@@ -28,6 +30,27 @@ def checked_rule(rule: str) -> str:
     return rule
 
 
+@dataclass(frozen=True, eq=False)
+class HeldOutFit:
+    """An image fitted to all data but a part, and the likelihood of that part."""
+
+    image: np.ndarray
+    score: Likelihood
+
+
+@dataclass(frozen=True, eq=False)
+class Settled:
+    """Priors with every weight set.
+
+    choice: how open weights were chosen, None if nothing was held out for it.
+    fits: the fits nearest to the chosen weight; empty if nothing was held out.
+    """
+
+    terms: list[Prior]
+    choice: Choice | None = None
+    fits: tuple[HeldOutFit, ...] = ()
+
+
 def settle(
     prior: Prior | Sum,
     likelihood: Likelihood,
@@ -35,8 +58,8 @@ def settle(
     rule: str = "auto",
     folds: Callable[[int, int], Pairs] | None = None,
     callback: Callable[[float], object] | None = None,
-) -> tuple[list[Prior], Choice | None]:
-    """Return the priors, every weight set, and how they were chosen (None if nothing was held out).
+) -> Settled:
+    """Return the priors, every weight set, and how they were chosen.
 
     rule: "auto" = by held-out data (`held_out.choose`), "rule" = the rule of thumb.
     folds: called with a number and a seed, gives the likelihoods to fit and to score; that of the
@@ -46,17 +69,47 @@ def settle(
     is_open = tuple(term.weight is None for term in terms)
     settled = weigh(prior, likelihood)
     if rule == "rule" or not any(is_open) or any(term.conic_only for term in terms):
-        return settled, None
+        return Settled(settled)
     if not likelihood.can_be_shared_out:
         nothing = np.empty(0)
         note = "too few detections to hold any out: the weight is the rule of thumb's"
-        return settled, Choice(1.0, None, nothing, nothing, nothing, 0, False, note)
+        return Settled(settled, Choice(1.0, None, nothing, nothing, nothing, 0, False, note))
     pairs = (folds or likelihood.folds)(FOLDS, SEED)
-    chosen = choose(
+    chosen, images = choose(
         [Fold(fit, score, tuple(weigh(prior, fit)), is_open, _wider(bounds, fit)) for fit, score in pairs],
         callback,
     )
-    return at_factor(settled, is_open, chosen.factor, chosen.second_order), chosen
+    fits = tuple(HeldOutFit(image, score) for image, (_, score) in zip(images, pairs, strict=True))
+    return Settled(at_factor(settled, is_open, chosen.factor, chosen.second_order), chosen, fits)
+
+
+def held_out_fits(
+    terms: Sequence[Prior],
+    likelihood: Likelihood,
+    bounds: tuple[float, float],
+    start: np.ndarray,
+    folds: Callable[[int, int], Pairs] | None = None,
+) -> tuple[HeldOutFit, ...]:
+    """Return fits to parts of the data, at weights given for all of them; empty if too few.
+
+    Weights follow the information of a part as their rule of thumb does, or as its square root.
+    """
+    if not likelihood.can_be_shared_out or any(term.conic_only for term in terms):
+        return ()
+    fits = []
+    for fit, score in (folds or likelihood.folds)(FOLDS, SEED):
+        scaled = [term.with_weight(term.weight * _share(term, fit, likelihood)) for term in terms]
+        image = fitted(Problem(fit, scaled, _wider(bounds, fit)), start)
+        fits.append(HeldOutFit(image, score))
+    return tuple(fits)
+
+
+def _share(term: Prior, part: Likelihood, whole: Likelihood) -> float:
+    known, all_ = typical_information(part), typical_information(whole)
+    try:
+        return term.typical_weight(known) / term.typical_weight(all_)
+    except ValueError:  # a prior without a rule
+        return math.sqrt(known / all_)
 
 
 def _wider(bounds: tuple[float, float], likelihood: Likelihood) -> tuple[float, float]:

@@ -36,7 +36,8 @@ def decibels(image: np.ndarray) -> float:
 @pytest.mark.parametrize("seed", range(3))
 def test_the_chosen_weight_loses_little_against_the_best(kind: str, seed: int) -> None:
     likelihood, bounds = likelihoods(seed)[kind], (0.0, 3.0)
-    terms, choice = settle(priors.TotalVariation(), likelihood, bounds)
+    settled = settle(priors.TotalVariation(), likelihood, bounds)
+    terms, choice = settled.terms, settled.choice
     chosen = recon.solve(recon.Problem(likelihood, terms, bounds), tolerance=1e-3).image
     best = max(
         decibels(
@@ -55,27 +56,31 @@ def test_the_chosen_weight_loses_little_against_the_best(kind: str, seed: int) -
 
 
 def test_a_weight_that_is_given_is_kept() -> None:
-    terms, choice = settle(priors.TotalVariation(1.5), likelihoods(0)["poisson"], (0.0, 3.0))
+    settled = settle(priors.TotalVariation(1.5), likelihoods(0)["poisson"], (0.0, 3.0))
+    terms, choice = settled.terms, settled.choice
     assert terms[0].weight == 1.5
     assert choice is None
 
 
 def test_the_rule_of_thumb_on_demand() -> None:
     likelihood = likelihoods(0)["poisson"]
-    terms, choice = settle(priors.TotalVariation(), likelihood, (0.0, 3.0), "rule")
+    settled = settle(priors.TotalVariation(), likelihood, (0.0, 3.0), "rule")
+    terms, choice = settled.terms, settled.choice
     assert choice is None
     assert terms[0].weight == recon.weights.weigh(priors.TotalVariation(), likelihood)[0].weight
 
 
 def test_both_weights_of_a_generalized_variation() -> None:
-    terms, choice = settle(priors.GeneralizedVariation(), likelihoods(1)["gaussian"], (0.0, 3.0))
+    settled = settle(priors.GeneralizedVariation(), likelihoods(1)["gaussian"], (0.0, 3.0))
+    terms, choice = settled.terms, settled.choice
     assert choice.second_order in (1.0, 2.0, 4.0)
     assert terms[0].second_order == choice.second_order
 
 
 def test_the_same_data_give_the_same_weight() -> None:
     first, second = (
-        settle(priors.TotalVariation(), likelihoods(2)["poisson"], (0.0, 3.0))[0][0].weight for _ in range(2)
+        settle(priors.TotalVariation(), likelihoods(2)["poisson"], (0.0, 3.0)).terms[0].weight
+        for _ in range(2)
     )
     assert first == second
 
