@@ -18,12 +18,15 @@ from recon.acquisition import TimeTags
 from recon.errors import InputError
 from recon.imaging.background_check import BackgroundCheck, background_check
 from recon.imaging.depth_belief import DepthBelief, depth_belief
+from recon.imaging.depth_trust import chosen_terms, depth_uncertainty, fits_to_halves
 from recon.imaging.image import PhysicalImage
 from recon.imaging.task import Effort
 from recon.likelihoods.detection_times import DetectionTimes
 from recon.problem import Prior, Problem, Sum, default_depth_prior
 from recon.solvers import solve
+from recon.uncertainty import RegionAverage, region_average
 from recon.validation import NONNEGATIVE, number_or_map
+from recon.weights import Choice
 
 __all__ = ["DepthBelief", "DepthImage", "depth", "depth_belief", "open_settings", "scene_bounds"]
 
@@ -31,6 +34,7 @@ TOLERANCE = 1e-2  # of depth, where the user gives none: closer solves changed n
 STEP = 2.0  # of the pulse's core: the step of depth at which an edge weighs half (measured)
 MARGIN = 8.0  # of the pulse's core: room in front of and behind the scene
 SURFACE = 3.0  # of the pulse's core: depths closer than this are the same surface
+DOUBTFUL = 0.02  # chance of another surface from which on an interval reaches to it
 FAINTEST = 0.1  # of the mean reflectivity: the least that is taken for the reflectivity of a target
 DIMMEST = 0.1  # signal detections: the least that a target is taken to cause
 
@@ -39,8 +43,8 @@ DIMMEST = 0.1  # signal detections: the least that a target is taken to cause
 class DepthImage(PhysicalImage):
     """A depth image (m), and how its pixels came by it.
 
-    uncertainty is half the width of the central interval that holds 68 % of the depth's probability if
-    there is a target; it says nothing of a wrong surface, which `wrong_surface` does.
+    uncertainty is calibrated on halves of the tags (`depth_trust`), the surface being right; that it may be
+    wrong is what `wrong_surface` says.
 
     start: the depth image that solving started from, the median of the belief.
     signal_tags: float32, how many of a pixel's tags are expected to be signal. Where it is below a half,
@@ -48,6 +52,7 @@ class DepthImage(PhysicalImage):
     target: float32, the probability that there is a target at all.
     wrong_surface: float32, the probability that a target is further than three cores of the pulse from the
         image.
+    farthest: float32 (2, rows, columns), depths between which 95 % of the belief lie if there is a target.
     background: whether the tags away from the surface are as many as the declared background says.
     """
 
@@ -55,7 +60,27 @@ class DepthImage(PhysicalImage):
     signal_tags: np.ndarray
     target: np.ndarray
     wrong_surface: np.ndarray
+    farthest: np.ndarray
     background: BackgroundCheck
+
+    def interval(self, share: float = 0.95) -> tuple[np.ndarray, np.ndarray]:
+        """See `PhysicalImage.interval`; if there is a target.
+
+        Where another surface has a chance of 2 % or more, the wider interval reaches as far as 95 % of
+        the belief do.
+        """
+        low, high = super().interval(share)
+        if share != 0.95:
+            return low, high
+        doubtful = self.wrong_surface >= DOUBTFUL
+        return (
+            np.where(doubtful, np.minimum(low, self.farthest[0]), low),
+            np.where(doubtful, np.maximum(high, self.farthest[1]), high),
+        )
+
+    def region(self, region: np.ndarray) -> RegionAverage:
+        """See `PhysicalImage.region`; one step for all pixels, as a pixel of few tags knows no depth."""
+        return region_average(self.problem.likelihood, self.image, region, shared=True)
 
     @property
     def maps(self) -> dict[str, np.ndarray]:
@@ -86,9 +111,14 @@ def depth(
     likelihood = DetectionTimes(tags, np.maximum(reflectivity, faintest_target(tags, reflectivity)))
     belief = depth_belief(likelihood)
     start = belief.depth
-    terms = open_settings(default_depth_prior() if prior is None else prior, likelihood, start)
+    prior = default_depth_prior() if prior is None else prior
+    terms, bounds = open_settings(prior, likelihood, start), scene_bounds(likelihood, start)
     tolerance = TOLERANCE if effort.tolerance is None else effort.tolerance
-    problem = Problem(likelihood, terms, scene_bounds(likelihood, start))
+    is_open = [term.weight is None for term in prior.terms()]
+    enough, choice, halves = likelihood.can_be_shared_out, None, []
+    if effort.weight == "auto" and any(is_open) and enough:
+        terms, choice, halves = chosen_terms(terms, is_open, likelihood, start, bounds, tolerance)
+    problem = Problem(likelihood, terms, bounds)
     told = effort.callback
     solution = solve(
         problem,
@@ -97,30 +127,39 @@ def depth(
         start=start,
         callback=None if told is None else lambda state: told("depth", state),
     )
+    belief_uncertainty = 0.5 * (belief.quantile(0.84) - belief.quantile(0.16))
     signal = likelihood.signal_tags(solution.image).astype(np.float32)
     reach = SURFACE * likelihood.pulse.core
     wrong = 1.0 - belief.probability_within(solution.image - reach, solution.image + reach)
+    if effort.judge and enough and not halves:
+        halves = fits_to_halves(terms, likelihood, solution.image, bounds, tolerance)
+    uncertainty = depth_uncertainty(halves, likelihood.pulse.core) if halves else belief_uncertainty
     check = background_check(likelihood, tags.background, solution.image, wrong)
     return DepthImage(
         image=solution.image,
         unit="m",
-        uncertainty=0.5 * (belief.quantile(0.84) - belief.quantile(0.16)),
+        uncertainty=uncertainty,
         filled=signal < 0.5,
         problem=problem,
         tolerance=tolerance,
-        choice=None,
-        notes=tuple(_notes(tags, check)),
+        choice=choice,
+        notes=tuple(_notes(tags, check, choice, enough)),
         status=solution.status,
         diagnostics=solution.diagnostics,
         start=start,
         signal_tags=signal,
         target=1.0 - belief.absent,
         wrong_surface=wrong,
+        farthest=np.array([belief.quantile(0.025), belief.quantile(0.975)]),
         background=check,
     )
 
 
-def _notes(tags: TimeTags, check: BackgroundCheck) -> Iterator[str]:
+def _notes(tags: TimeTags, check: BackgroundCheck, choice: Choice | None, enough: bool) -> Iterator[str]:
+    if choice is not None and choice.note:
+        yield choice.note
+    if not enough:
+        yield "too few tags to hold any out: the weight is the rule of thumb's, the uncertainty the belief's"
     if not check.fits:
         yield check.words
     if tags.dead_time is not None and tags.dead_time.not_modelled:

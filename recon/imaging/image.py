@@ -9,8 +9,12 @@ import numpy as np
 
 from recon.acquisition import Counts, Frames, TimeHistogram, TimeTags
 from recon.diagnostics import Diagnostics, Status
+from recon.errors import InputError
 from recon.problem import Prior, Problem
+from recon.uncertainty import OF_95, RegionAverage, region_average
 from recon.weights import Choice
+
+SHARES = {0.68: 1.0, 0.95: OF_95}  # of an interval, and its half width in standard uncertainties
 
 
 @dataclass(frozen=True, eq=False)
@@ -19,7 +23,9 @@ class PhysicalImage:
 
     image: float32 (rows, columns), in `unit`.
     unit: SI unit, "1" for a ratio.
-    uncertainty: float32 standard uncertainty of each pixel, in `unit`.
+    uncertainty: float32 standard uncertainty of each pixel, in `unit`: the truth is within it in 68 % of
+        pixels, what the prior smoothed away included (`recon.uncertainty.calibrated`), or, where nothing
+        could be held out, that of the pixel's own data (a note says so).
     filled: boolean map, True where the pixel has no usable data and the prior alone fills it in.
     problem: what was solved: likelihood, priors with their weights, bounds.
     tolerance: the relative gap that was aimed at.
@@ -48,6 +54,22 @@ class PhysicalImage:
     def bounds(self) -> tuple[float, float]:
         """The bounds used."""
         return self.problem.bounds
+
+    def interval(self, share: float = 0.95) -> tuple[np.ndarray, np.ndarray]:
+        """Return the ends of an interval that holds the truth in 68 % or 95 % of pixels (float32 maps).
+
+        Errors have longer tails than a normal law: the wider one is 2.5 times the other. Neither reaches
+        beyond the bounds. share: 0.68 or 0.95. Raises InputError.
+        """
+        if share not in SHARES:
+            raise InputError(f"share is {share!r}; give 0.68 or 0.95, for which the width was calibrated.")
+        half = self.uncertainty * np.float32(SHARES[share])
+        low, high = self.bounds
+        return np.clip(self.image - half, low, high), np.clip(self.image + half, low, high)
+
+    def region(self, region: np.ndarray) -> RegionAverage:
+        """Return the mean over a region (boolean map) and its uncertainty, see `region_average`."""
+        return region_average(self.problem.likelihood, self.image, region)
 
 
 @dataclass(frozen=True, eq=False)

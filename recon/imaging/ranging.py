@@ -45,10 +45,11 @@ def ranging(
     rough = replace(effort, weight="rule", judge=False)  # what it is for does not need the best weight
     likelihood = counting_likelihood(live_counts(tags))
     first = image_of("first_reflectivity", likelihood, reflectivity_prior, "1", rough)
-    surface = depth(tags, first.image, depth_prior, effort)
-    for _ in range(ROUNDS if tags.dead_time is not None else tags.gate is not None):
+    rounds = ROUNDS if tags.dead_time is not None else int(tags.gate is not None)
+    surface = depth(tags, first.image, depth_prior, rough if rounds else effort)
+    for left in reversed(range(rounds)):
         brightness = gated_reflectivity(tags, surface.image, reflectivity_prior, replace(effort, judge=False))
-        surface = depth(tags, brightness.image, depth_prior, effort)
+        surface = depth(tags, brightness.image, depth_prior, rough if left else effort)
     return gated_reflectivity(tags, surface.image, reflectivity_prior, effort), surface
 
 

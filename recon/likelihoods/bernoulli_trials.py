@@ -240,8 +240,8 @@ class BernoulliTrials(Likelihood):
         return float(self._count.sum(dtype=np.float64)) >= LEAST_SHARED
 
     @property
-    def scores_by_distance(self) -> bool:
-        """See `Likelihood.scores_by_distance`."""
+    def scores_add_up(self) -> bool:
+        """See `Likelihood.scores_add_up`."""
         return self._stop_after is None
 
     def score_map(self, x: np.ndarray) -> np.ndarray:

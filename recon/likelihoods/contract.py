@@ -135,13 +135,13 @@ class Likelihood(ABC):
 
         In expectation it is least, over all images, at the truth. This default is `value_map`, the
         predictive log-likelihood; where there is an unbiased estimate of the image it is the squared
-        distance from that, and `scores_by_distance` is True.
+        distance from that.
         """
         return self.value_map(x)
 
     @property
-    def scores_by_distance(self) -> bool:
-        """Whether `score_map` is in squares of the image's unit; if not, it is in nats."""
+    def scores_add_up(self) -> bool:
+        """Whether the `score_map` of unlike pixels may be summed as it is; if not, over their information."""
         return False
 
     # Convex likelihoods ------------------------------------------------------------------------

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from functools import cached_property
 from typing import Any
 
@@ -10,11 +11,11 @@ from numpy.typing import ArrayLike
 
 from recon.acquisition.time_tags import SPEED_OF_LIGHT, TimeTags
 from recon.errors import InputError
-from recon.likelihoods.contract import Interval, Likelihood
+from recon.likelihoods.contract import LEAST_SHARED, Interval, Likelihood
 from recon.likelihoods.detection_time_draws import draw_given_exposure, draw_given_number
 from recon.likelihoods.gaussian import Gaussian
 from recon.likelihoods.inputs import drawing_image
-from recon.likelihoods.live_exposure import live_exposure
+from recon.likelihoods.live_exposure import LiveExposure, live_exposure
 from recon.likelihoods.range_pulse import range_pulse
 from recon.validation import NONNEGATIVE, POSITIVE, number_or_map
 
@@ -161,13 +162,17 @@ class DetectionTimes(Likelihood):
 
     def value_map(self, z: np.ndarray) -> np.ndarray:
         """See `Likelihood.value_map`."""
+        return self._best[1] + self._loss(z)
+
+    def _loss(self, z: np.ndarray) -> np.ndarray:
+        """Return signal (A - trials) - sum of log(1 + p / noise)."""
         from recon.likelihoods import detection_time_kernels as kernels
 
         excess = np.zeros(self.shape)
         kernels.excess(np.asarray(z, np.float64), *self._tags, *self._table, excess)
         if not self.live.is_whole:
             excess += self.signal * self.live.losses(z, self.pulse, self._used)[0]
-        return self._best[1] - excess
+        return -excess
 
     def _derivatives(self, z: np.ndarray, share: float = 0.0) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
         from recon.likelihoods import detection_time_kernels as kernels
@@ -255,13 +260,51 @@ class DetectionTimes(Likelihood):
 
         draws = draw_given_number if self.live.is_whole else draw_given_exposure
         tags, y = draws(self, drawing_image(z, self.shape), np.random.default_rng(seed))
+        start = np.concatenate([[0], np.cumsum(tags)])
+        y = kernels.ranges(y, start, self.shape[1], np.zeros((1, 1)), 1.0, self.pulse.period)
+        return self._with(y, tags, self.live, self._used)
+
+    def _with(self, y: np.ndarray, tags: np.ndarray, live: LiveExposure, used: np.ndarray) -> DetectionTimes:
+        """Return the same likelihood of other tags, so many of each pixel (pixels,)."""
         other = object.__new__(type(self))
         other.__dict__.update(self.__dict__)
         for name in ("_best", "_information"):
             other.__dict__.pop(name, None)
-        other.start = np.concatenate([[0], np.cumsum(tags)])
-        other.y = kernels.ranges(y, other.start, self.shape[1], np.zeros((1, 1)), 1.0, self.pulse.period)
+        other.y, other.start = y, np.concatenate([[0], np.cumsum(tags)])
+        other._used, other.live, other.trials = used, live, live.trials
         return other
+
+    def folds(self, number: int, seed: int) -> list[tuple[Likelihood, Likelihood]]:
+        """Return pairs that share out the tags: each falls into any of `number` parts alike.
+
+        The live exposure is shared with them, as it is known from all tags.
+        """
+        part = np.random.default_rng(seed).integers(number, size=self.y.size)
+        share = 1.0 / number
+        return [(self._of(part != f, 1.0 - share), self._of(part == f, share)) for f in range(number)]
+
+    def _of(self, chosen: np.ndarray, share: float) -> DetectionTimes:
+        """Return the same likelihood of some tags, in that share of the exposure."""
+        tags = np.add.reduceat(np.append(chosen, False), self.start[:-1], dtype=np.int64)
+        tags[np.diff(self.start) == 0] = 0
+        live = self.live
+        live = replace(live, trials=share * live.trials, level=share * live.level)
+        return self._with(self.y[chosen], tags, live, (tags > 0).reshape(self.shape) & self.exposed)
+
+    @property
+    def can_be_shared_out(self) -> bool:
+        """See `Likelihood.can_be_shared_out`."""
+        tags = np.diff(self.start).reshape(self.shape)
+        return int(np.sum(tags, where=self._used)) >= LEAST_SHARED
+
+    def score_map(self, z: np.ndarray) -> np.ndarray:
+        """Return minus the log of the tags' density, less what does not depend on z."""
+        return self._loss(z)
+
+    @property
+    def scores_add_up(self) -> bool:
+        """See `Likelihood.scores_add_up`: a pixel that knows little of its depth says little."""
+        return True
 
     def majorise(self, z: np.ndarray) -> Gaussian:
         """Return the parabola that touches at z and lies above; without losses, no weight where no tag is."""

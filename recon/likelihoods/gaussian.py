@@ -170,8 +170,8 @@ class Gaussian(Likelihood):
         return pairs
 
     @property
-    def scores_by_distance(self) -> bool:
-        """See `Likelihood.scores_by_distance`."""
+    def scores_add_up(self) -> bool:
+        """See `Likelihood.scores_add_up`."""
         return True
 
     def score_map(self, x: np.ndarray) -> np.ndarray:

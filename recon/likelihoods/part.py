@@ -54,9 +54,9 @@ class PixelPart(Likelihood):
         return self._masked(self.whole.value_map(x))
 
     @property
-    def scores_by_distance(self) -> bool:
-        """See `Likelihood.scores_by_distance`."""
-        return self.whole.scores_by_distance
+    def scores_add_up(self) -> bool:
+        """See `Likelihood.scores_add_up`."""
+        return self.whole.scores_add_up
 
     def score_map(self, x: np.ndarray) -> np.ndarray:
         """See `Likelihood.score_map`."""

@@ -162,8 +162,8 @@ class Poisson(Likelihood):
         return float(self._count.sum(dtype=np.float64)) >= LEAST_SHARED
 
     @property
-    def scores_by_distance(self) -> bool:
-        """See `Likelihood.scores_by_distance`."""
+    def scores_add_up(self) -> bool:
+        """See `Likelihood.scores_add_up`."""
         return True
 
     def score_map(self, x: np.ndarray) -> np.ndarray:

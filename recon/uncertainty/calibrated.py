@@ -68,13 +68,13 @@ def _parts(likelihood: Likelihood, image: NDArray, fits: Sequence[HeldOutFit]) -
     mean = gaussian_filter(image, NEAR)
     among = np.maximum(gaussian_filter(image * image, NEAR) - mean * mean, 0.0)
     with np.errstate(divide="ignore", invalid="ignore"):
-        own = 1.0 / likelihood.fisher_information(_lifted(mean))
+        own = 1.0 / likelihood.fisher_information(lifted(mean))
     known = np.isfinite(own) & likelihood.has_data
     own = np.where(known, own, np.median(own[known]) if known.any() else 0.0)
     return np.array([jackknife, among, OWN * own])
 
 
-def _lifted(image: NDArray) -> NDArray:
+def lifted(image: NDArray) -> NDArray:
     """Return the image, no pixel less than a small share of the mean: a law at zero has no width."""
     return np.maximum(image, LEAST * max(float(image.mean()), 0.0))
 
@@ -100,7 +100,7 @@ def _told(
 
 def _shared(fit: HeldOutFit) -> tuple[NDArray, NDArray]:
     """Return r times the mean r of the 8 neighbours, and where there are both."""
-    x = _lifted(np.asarray(fit.image, np.float64))
+    x = lifted(np.asarray(fit.image, np.float64))
     with np.errstate(divide="ignore", invalid="ignore"):
         off = fit.score.gradient(x) / fit.score.fisher_information(x)
     known = fit.score.has_data & np.isfinite(off)

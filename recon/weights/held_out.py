@@ -31,7 +31,7 @@ class Fold:
     """A likelihood to fit and one to score, of the same image.
 
     terms: the priors of the fit at factor 1, those to be chosen at their rule of thumb. open: which are.
-    bounds: of the fit. start: image to start from, or None.
+    bounds: of the fit. start: image to start from, or None. tolerance: of the fit.
     """
 
     fit: Likelihood
@@ -40,6 +40,7 @@ class Fold:
     open: tuple[bool, ...]
     bounds: tuple[float, float]
     start: np.ndarray | None = None
+    tolerance: float = TOLERANCE
 
 
 @dataclass(frozen=True, eq=False)
@@ -98,7 +99,7 @@ class _Path:
         if self.images:
             near = min(self.images, key=lambda other: abs(math.log(other / factor)))
             start = self.images[near][index]
-        return fitted(Problem(fold.fit, terms, fold.bounds), start)
+        return fitted(Problem(fold.fit, terms, fold.bounds), start, fold.tolerance)
 
     def difference(self, one: float, other: float) -> tuple[float, float]:
         """Return the score at one factor less that at another, and its standard error."""
@@ -107,9 +108,9 @@ class _Path:
         return sum(float(d.sum()) for d in apart), math.sqrt(square)
 
 
-def fitted(problem: Problem, start: np.ndarray | None) -> np.ndarray:
+def fitted(problem: Problem, start: np.ndarray | None, tolerance: float = TOLERANCE) -> np.ndarray:
     """Return the image of a fit to a part of the data."""
-    return solve(problem, tolerance=TOLERANCE, max_iterations=LIMIT, start=start).image
+    return solve(problem, tolerance=tolerance, max_iterations=LIMIT, start=start).image
 
 
 def _above_zero(image: np.ndarray) -> np.ndarray:
@@ -122,7 +123,7 @@ def _pilot(fold: Fold, image: np.ndarray) -> np.ndarray | float:
     Near the truth a log-likelihood is half the information times the squared distance, so that this makes
     it a squared distance, whatever the pixel; and weights that come from other data favour no image.
     """
-    if fold.score.scores_by_distance:
+    if fold.score.scores_add_up:
         return 1.0
     information = fold.score.fisher_information(_above_zero(image))
     seen = fold.score.has_data & np.isfinite(information) & (information > 0.0)
@@ -146,11 +147,14 @@ def at_factor(
 
 
 def choose(
-    folds: Sequence[Fold], callback: Callable[[float], object] | None = None
+    folds: Sequence[Fold],
+    callback: Callable[[float], object] | None = None,
+    second_order: bool = True,
 ) -> tuple[Choice, list[np.ndarray]]:
     """Return the factor with the best held-out score, found by walking downhill from factor 1, and its fits.
 
-    callback: called with every factor that is tried.
+    callback: called with every factor that is tried. second_order: whether to choose that, too, where a
+        prior has one.
     """
     path = _Path(folds, callback)
     at = 0
@@ -163,7 +167,7 @@ def choose(
     score, error = (np.array(column) for column in zip(*compared, strict=True))
     at_edge = best in (factors[0], factors[-1])
     factor = best if at_edge else _vertex(factors, score, int(np.searchsorted(factors, best)))
-    second = _second_order(path, folds[0], best)
+    second = _second_order(path, folds[0], best) if second_order else None
     note = ""
     if at_edge:
         note = f"the best weight is at the end of the path, {best:.3g} times the rule of thumb"

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
@@ -12,7 +11,7 @@ from recon.errors import InputError
 from recon.likelihoods.contract import Likelihood
 from recon.problem import Prior, Problem, Sum
 from recon.weights.held_out import Choice, Fold, at_factor, choose, fitted
-from recon.weights.thumb import typical_information, weigh
+from recon.weights.thumb import for_part, typical_information, weigh
 
 FOLDS = 3
 SEED = 20_240_517  # of the folds: the same data give the same weight
@@ -90,26 +89,15 @@ def held_out_fits(
     start: np.ndarray,
     folds: Callable[[int, int], Pairs] | None = None,
 ) -> tuple[HeldOutFit, ...]:
-    """Return fits to parts of the data, at weights given for all of them; empty if too few.
-
-    Weights follow the information of a part as their rule of thumb does, or as its square root.
-    """
+    """Return fits to parts of the data, at weights given for all of them; empty if too few."""
     if not likelihood.can_be_shared_out or any(term.conic_only for term in terms):
         return ()
-    fits = []
+    whole, fits = typical_information(likelihood), []
     for fit, score in (folds or likelihood.folds)(FOLDS, SEED):
-        scaled = [term.with_weight(term.weight * _share(term, fit, likelihood)) for term in terms]
-        image = fitted(Problem(fit, scaled, _wider(bounds, fit)), start)
-        fits.append(HeldOutFit(image, score))
+        known = typical_information(fit)
+        problem = Problem(fit, [for_part(term, known, whole) for term in terms], _wider(bounds, fit))
+        fits.append(HeldOutFit(fitted(problem, start), score))
     return tuple(fits)
-
-
-def _share(term: Prior, part: Likelihood, whole: Likelihood) -> float:
-    known, all_ = typical_information(part), typical_information(whole)
-    try:
-        return term.typical_weight(known) / term.typical_weight(all_)
-    except ValueError:  # a prior without a rule
-        return math.sqrt(known / all_)
 
 
 def _wider(bounds: tuple[float, float], likelihood: Likelihood) -> tuple[float, float]:

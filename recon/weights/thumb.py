@@ -35,3 +35,15 @@ def weigh(prior: Prior | Sum, likelihood: Likelihood) -> list[Prior]:
         term if term.weight is not None else term.with_weight(term.typical_weight(information))
         for term in terms
     ]
+
+
+def for_part(term: Prior, part: float, whole: float) -> Prior:
+    """Return a prior, weighed for all data, at the weight for a part of them, given the information of both.
+
+    The weight follows the information as the prior's rule of thumb does, or as its square root.
+    """
+    try:
+        share = term.typical_weight(part) / term.typical_weight(whole)
+    except ValueError:  # a prior without a rule
+        share = math.sqrt(part / whole)
+    return term.with_weight(term.weight * share)
