@@ -115,7 +115,7 @@ def depth(
     terms, bounds = open_settings(prior, likelihood, start), scene_bounds(likelihood, start)
     tolerance = TOLERANCE if effort.tolerance is None else effort.tolerance
     is_open = [term.weight is None for term in prior.terms()]
-    enough, choice, halves = likelihood.can_be_shared_out, None, []
+    enough, choice, halves = likelihood.can_be_shared_out, None, ()
     if effort.weight == "auto" and any(is_open) and enough:
         terms, choice, halves = chosen_terms(terms, is_open, likelihood, start, bounds, tolerance)
     problem = Problem(likelihood, terms, bounds)
@@ -142,6 +142,7 @@ def depth(
         filled=signal < 0.5,
         problem=problem,
         tolerance=tolerance,
+        held_out=halves,
         choice=choice,
         notes=tuple(_notes(tags, check, choice, enough)),
         status=solution.status,

@@ -10,7 +10,7 @@ from scipy.ndimage import gaussian_filter
 from recon.likelihoods.detection_times import DetectionTimes
 from recon.problem import Prior, Problem
 from recon.solvers import solve
-from recon.weights import Choice, Fold, at_factor, choose, for_part
+from recon.weights import Choice, Fold, HeldOutFit, at_factor, choose, for_part
 
 FOLDS = 2  # halves of the tags: fewer fits than thirds, and no worse (measured)
 SEED = 20_240_518
@@ -28,12 +28,13 @@ def chosen_terms(
     start: np.ndarray,
     bounds: tuple[float, float],
     tolerance: float,
-) -> tuple[list[Prior], Choice, list[np.ndarray]]:
+) -> tuple[list[Prior], Choice, tuple[HeldOutFit, ...]]:
     """Return the priors with the open weights that predict held-out tags best, the choice, and its fits.
 
     The tags are shared out, half and half (`DetectionTimes.folds`). Edge weights and start are those of all
     tags, which favours no weight within a surface. The second weight of a prior keeps its default.
     """
+    pairs = likelihood.folds(FOLDS, SEED)
     folds = [
         Fold(
             fit,
@@ -44,10 +45,11 @@ def chosen_terms(
             start,
             tolerance,
         )
-        for fit, score in likelihood.folds(FOLDS, SEED)
+        for fit, score in pairs
     ]
     choice, images = choose(folds, second_order=False)
-    return at_factor(terms, is_open, choice.factor), choice, images
+    fits = tuple(HeldOutFit(image, score) for image, (_, score) in zip(images, pairs, strict=True))
+    return at_factor(terms, is_open, choice.factor), choice, fits
 
 
 def fits_to_halves(
@@ -56,27 +58,26 @@ def fits_to_halves(
     image: np.ndarray,
     bounds: tuple[float, float],
     tolerance: float,
-) -> list[np.ndarray]:
-    """Return the depth images of either half of the tags, at weights given for all."""
-    return [
-        solve(
-            Problem(fit, _scaled(terms, fit, likelihood), bounds),
-            tolerance=tolerance,
-            max_iterations=LIMIT,
-            start=image,
-        ).image
-        for fit, _ in likelihood.folds(FOLDS, SEED)
-    ]
+) -> tuple[HeldOutFit, ...]:
+    """Return the fits to either half of the tags, at weights given for all."""
+    fits = []
+    for fit, score in likelihood.folds(FOLDS, SEED):
+        problem = Problem(fit, _scaled(terms, fit, likelihood, image), bounds)
+        solution = solve(problem, tolerance=tolerance, max_iterations=LIMIT, start=image)
+        fits.append(HeldOutFit(solution.image, score))
+    return tuple(fits)
 
 
-def depth_uncertainty(halves: Sequence[np.ndarray], core: float) -> np.ndarray:
+def depth_uncertainty(halves: Sequence[HeldOutFit], core: float) -> np.ndarray:
     """Return the standard uncertainty of each pixel if its surface is right, m (float32).
 
     Fits to disjoint halves of the tags differ by twice the noise of a fit to all (grouped jackknife,
     Quenouille 1956); errors are that and what the prior smooths away, which grows with it.
     """
     share = (len(halves) - 1.0) / len(halves)
-    variance = gaussian_filter(share * np.var(halves, axis=0, dtype=np.float64, ddof=1), BLUR)
+    variance = gaussian_filter(
+        share * np.var([half.image for half in halves], axis=0, dtype=np.float64, ddof=1), BLUR
+    )
     return np.hypot(STANDARD * np.sqrt(variance), FLOOR * core).astype(np.float32)
 
 

@@ -9,13 +9,12 @@ import numpy as np
 
 from recon.acquisition import Frames
 from recon.imaging.image import PhysicalImage
-from recon.imaging.task import Effort, image_of
+from recon.imaging.task import Effort, image_of, judged
 from recon.imaging.yield_estimators import conventional_yield, one_frame_note, total_dose
 from recon.likelihoods.contract import Likelihood
 from recon.likelihoods.gaussian import Gaussian
 from recon.likelihoods.poisson import Poisson
-from recon.problem import Prior, Sum, default_prior
-from recon.uncertainty import calibrated_uncertainty
+from recon.problem import Prior, Problem, Sum, default_prior
 from recon.weights import held_out_fits, settle
 
 TRENDED = 16  # frames from which on a trend over the dwell is looked for
@@ -88,10 +87,8 @@ def _at_shifts(
     moved, prior = MovingFrames(frames, shifts), Sum(*settled.terms)
     image = image_of("electron_yield", moved, prior, "1", replace(effort, judge=False), notes=notes)
     fits = settled.fits or held_out_fits(settled.terms, still, still.default_bounds, image.image)
-    if fits:
-        uncertainty = calibrated_uncertainty(still, image.image, fits, image.bounds)
-        image = replace(image, uncertainty=uncertainty)
-    return replace(image, choice=settled.choice)
+    uncertainty = judged(Problem(still, settled.terms, image.bounds), image.image, fits)
+    return replace(image, uncertainty=uncertainty, held_out=fits, choice=settled.choice)
 
 
 def yield_likelihood(frames: Frames) -> Likelihood:

@@ -12,7 +12,7 @@ from recon.diagnostics import Diagnostics, Status
 from recon.errors import InputError
 from recon.problem import Prior, Problem
 from recon.uncertainty import OF_95, RegionAverage, region_average
-from recon.weights import Choice
+from recon.weights import Choice, HeldOutFit
 
 SHARES = {0.68: 1.0, 0.95: OF_95}  # of an interval, and its half width in standard uncertainties
 
@@ -30,6 +30,7 @@ class PhysicalImage:
     problem: what was solved: likelihood, priors with their weights, bounds.
     tolerance: the relative gap that was aimed at.
     notes: sentences that a reader should know; often none.
+    held_out: the fits to all data but a part, and what scores them; empty where nothing was held out.
     choice: how the open weights were chosen by held-out data; None if they were not.
     status, diagnostics: how the solve ended.
     """
@@ -40,6 +41,7 @@ class PhysicalImage:
     filled: np.ndarray
     problem: Problem
     tolerance: float
+    held_out: tuple[HeldOutFit, ...]
     choice: Choice | None
     notes: tuple[str, ...]
     status: Status

@@ -62,33 +62,28 @@ def image_of(
         start=start,
         callback=None if told is None else lambda state: told(name, state),
     )
-    uncertainty, also = _judged(problem, solution.image, settled.fits, effort, folds)
+    fits = settled.fits
+    if effort.judge and not fits:
+        fits = held_out_fits(terms, likelihood, bounds, solution.image, folds)
+    chosen = "" if choice is None else choice.note
+    alone = ALONE if effort.judge and not fits else ""
     return PhysicalImage(
         image=solution.image,
         unit=unit,
-        uncertainty=uncertainty,
+        uncertainty=judged(problem, solution.image, fits),
         filled=~likelihood.has_data,
         problem=problem,
         tolerance=tolerance,
+        held_out=fits,
         choice=choice,
-        notes=notes + ((choice.note,) if choice is not None and choice.note else ()) + also,
+        notes=tuple(note for note in (*notes, chosen, alone) if note),
         status=solution.status,
         diagnostics=solution.diagnostics,
     )
 
 
-def _judged(
-    problem: Problem,
-    image: np.ndarray,
-    fits: tuple[HeldOutFit, ...],
-    effort: Effort,
-    folds: Callable[[int, int], Pairs] | None,
-) -> tuple[np.ndarray, tuple[str, ...]]:
-    """Return the uncertainty of an image, and what to say of it."""
-    likelihood = problem.likelihood
-    if effort.judge and not fits:
-        fits = held_out_fits(problem.priors, likelihood, problem.bounds, image, folds)
+def judged(problem: Problem, image: np.ndarray, fits: tuple[HeldOutFit, ...]) -> np.ndarray:
+    """Return the uncertainty of an image: calibrated if there are fits, else of each pixel by itself."""
     if fits:
-        return calibrated_uncertainty(likelihood, image, fits, problem.bounds), ()
-    alone = local_uncertainty(likelihood, image, problem.bounds)
-    return alone, (ALONE,) if effort.judge else ()
+        return calibrated_uncertainty(problem.likelihood, image, fits, problem.bounds)
+    return local_uncertainty(problem.likelihood, image, problem.bounds)

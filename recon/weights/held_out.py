@@ -44,6 +44,14 @@ class Fold:
 
 
 @dataclass(frozen=True, eq=False)
+class HeldOutFit:
+    """An image fitted to all data but a part, and the likelihood of that part."""
+
+    image: np.ndarray
+    score: Likelihood
+
+
+@dataclass(frozen=True, eq=False)
 class Choice:
     """How the weight was chosen.
 
@@ -85,7 +93,9 @@ class _Path:
             if second_order is None:
                 self.images[factor] = images
             if not self.pilots:
-                self.pilots = [_pilot(fold, image) for fold, image in zip(self.folds, images, strict=True)]
+                self.pilots = [
+                    _pilot(fold.score, image) for fold, image in zip(self.folds, images, strict=True)
+                ]
             self.scores[key] = [
                 pilot * fold.score.score_map(_above_zero(image))
                 for fold, image, pilot in zip(self.folds, images, self.pilots, strict=True)
@@ -117,19 +127,34 @@ def _above_zero(image: np.ndarray) -> np.ndarray:
     return np.maximum(image, FLOOR * max(float(image.mean()), 0.0))
 
 
-def _pilot(fold: Fold, image: np.ndarray) -> np.ndarray | float:
+def _pilot(score: Likelihood, image: np.ndarray) -> np.ndarray | float:
     """Return what a pixel's predictive log-likelihood counts for: 1 over its information at a first fit.
 
     Near the truth a log-likelihood is half the information times the squared distance, so that this makes
     it a squared distance, whatever the pixel; and weights that come from other data favour no image.
     """
-    if fold.score.scores_add_up:
+    if score.scores_add_up:
         return 1.0
-    information = fold.score.fisher_information(_above_zero(image))
-    seen = fold.score.has_data & np.isfinite(information) & (information > 0.0)
+    information = score.fisher_information(_above_zero(image))
+    seen = score.has_data & np.isfinite(information) & (information > 0.0)
     weight = np.zeros(image.shape)
     weight[seen] = 1.0 / information[seen]
     return weight
+
+
+def held_out_scores(fits: Sequence[Sequence[HeldOutFit]]) -> list[np.ndarray]:
+    """Return the held-out score of each pixel, summed over folds, for several sets of fits to the same folds.
+
+    What a pixel counts for is set by the first set, see `_pilot`.
+    """
+    pilots = [_pilot(fit.score, fit.image) for fit in fits[0]]
+    return [
+        sum(
+            pilot * fit.score.score_map(_above_zero(fit.image))
+            for pilot, fit in zip(pilots, each, strict=True)
+        )
+        for each in fits
+    ]
 
 
 def at_factor(

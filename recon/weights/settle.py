@@ -10,7 +10,7 @@ import numpy as np
 from recon.errors import InputError
 from recon.likelihoods.contract import Likelihood
 from recon.problem import Prior, Problem, Sum
-from recon.weights.held_out import Choice, Fold, at_factor, choose, fitted
+from recon.weights.held_out import Choice, Fold, HeldOutFit, at_factor, choose, fitted
 from recon.weights.thumb import for_part, typical_information, weigh
 
 FOLDS = 3
@@ -27,14 +27,6 @@ def checked_rule(rule: str) -> str:
             f"weight is {rule!r}; give one of {', '.join(RULES)}, or set the weight of the prior."
         )
     return rule
-
-
-@dataclass(frozen=True, eq=False)
-class HeldOutFit:
-    """An image fitted to all data but a part, and the likelihood of that part."""
-
-    image: np.ndarray
-    score: Likelihood
 
 
 @dataclass(frozen=True, eq=False)
