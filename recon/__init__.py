@@ -13,7 +13,7 @@ from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from recon import instrument, likelihoods, simulate, testing
+    from recon import instrument, likelihoods, sampling, simulate, testing, uncertainty
     from recon.acquisition import (
         Counts,
         DeadTime,
@@ -27,7 +27,8 @@ if TYPE_CHECKING:
     from recon.diagnostics import Diagnostics, Status
     from recon.errors import InputError
     from recon.files import load, save
-    from recon.imaging import reconstruct
+    from recon.fit import goodness
+    from recon.imaging import compare, reconstruct
     from recon.problem import Problem
     from recon.result import Solution
     from recon.solvers import solve
@@ -46,17 +47,19 @@ _HOMES = {
     "Status": "diagnostics",
     "TimeHistogram": "acquisition",
     "TimeTags": "acquisition",
+    "compare": "imaging",
+    "goodness": "fit",
     "load": "files",
     "reconstruct": "imaging",
     "save": "files",
     "solve": "solvers",
 }
-_MODULES = ("instrument", "likelihoods", "simulate", "testing")
+_MODULES = ("instrument", "likelihoods", "sampling", "simulate", "testing", "uncertainty")
 
 __all__ = [
     "Counts", "DeadTime", "Diagnostics", "Frames", "GaussianPulse", "InputError", "MarkLaw", "Problem",
-    "SampledPulse", "Solution", "Status", "TimeHistogram", "TimeTags", "instrument", "likelihoods", "load",
-    "reconstruct", "save", "simulate", "solve", "testing",
+    "SampledPulse", "Solution", "Status", "TimeHistogram", "TimeTags", "compare", "goodness", "instrument",
+    "likelihoods", "load", "reconstruct", "sampling", "save", "simulate", "solve", "testing", "uncertainty",
 ]  # fmt: skip
 
 

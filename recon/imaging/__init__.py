@@ -1,8 +1,11 @@
 """One file per kind of image."""
 
+from recon.imaging.compare import Comparison, compare
 from recon.imaging.depth import DepthImage
 from recon.imaging.image import PhysicalImage, Reconstruction
 from recon.imaging.point_cloud import point_cloud
 from recon.imaging.reconstruct import reconstruct
 
-__all__ = ["DepthImage", "PhysicalImage", "Reconstruction", "point_cloud", "reconstruct"]
+__all__ = [
+    "Comparison", "DepthImage", "PhysicalImage", "Reconstruction", "compare", "point_cloud", "reconstruct",
+]  # fmt: skip

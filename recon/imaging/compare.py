@@ -7,7 +7,7 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
-from scipy.stats import norm
+from scipy.special import ndtri
 
 from recon.acquisition import Counts, Frames, TimeHistogram, TimeTags
 from recon.errors import InputError
@@ -34,7 +34,7 @@ class Candidate:
         `Likelihood.score_map`, summed over pixels and folds: squared errors but for a constant, in the
         unit of the image squared, or nats where there is no unbiased estimate.
     as_good: whether the data cannot tell it from the best.
-    freedom: effective degrees of freedom; None for a prior that only the conic solver takes.
+    freedom: effective degrees of freedom.
     seconds: wall-clock time of the whole reconstruction, its weight and uncertainty included.
     """
 
@@ -43,7 +43,7 @@ class Candidate:
     difference: float
     standard_error: float
     as_good: bool
-    freedom: Freedom | None
+    freedom: Freedom
     seconds: float
 
 
@@ -97,27 +97,19 @@ def compare(
         kind, image = list(result.images.items())[-1]
         if not image.held_out:
             raise InputError(
-                f"acquisition holds too few detections to hold any out, or prior {type(prior).__name__} cannot"
-                " be fitted to parts of them; compare needs held-out data: give more, or other priors."
+                f"acquisition holds too few detections to hold any out, or prior {spelled(prior)} cannot be"
+                " fitted to parts of them; give more detections, or other priors."
             )
         images.append(image)
     scores = held_out_scores([image.held_out for image in images])
     best = int(np.argmin([score.sum() for score in scores]))
-    limit = float(norm.isf(0.5 * CHANCE / (len(priors) - 1)))
+    limit = float(ndtri(1.0 - 0.5 * CHANCE / (len(priors) - 1)))
     candidates = []
     for index, (prior, image) in enumerate(zip(priors, images, strict=True)):
         difference, error = _paired(scores[index] - scores[best])
-        candidates.append(
-            Candidate(
-                prior,
-                image,
-                difference,
-                error,
-                difference <= limit * error,
-                degrees_of_freedom(image.problem, image.image),
-                seconds[index],
-            )  # fmt: skip
-        )
+        freedom = degrees_of_freedom(image.problem, image.image)
+        as_good = difference <= limit * error
+        candidates.append(Candidate(prior, image, difference, error, as_good, freedom, seconds[index]))
     verdict = _verdict(candidates, best)
     return Comparison(kind, tuple(candidates), best, len(images[0].held_out), verdict)
 
@@ -141,7 +133,8 @@ def _verdict(candidates: Sequence[Candidate], best: int) -> str:
     if not worse:
         said = f"{NO_DIFFERENCE} between {_listed(alike)}"
     elif len(alike) > 1:
-        said = f"{NO_DIFFERENCE} between {_listed(alike)}; {_listed(worse)} predict{'s' * (len(worse) == 1)} worse"
+        ending = "s" if len(worse) == 1 else ""
+        said = f"{NO_DIFFERENCE} between {_listed(alike)}; {_listed(worse)} predict{ending} worse"
     return said + (f"; NOT CONVERGED: {_listed(late)}" if late else "")
 
 

@@ -73,7 +73,7 @@ class Likelihood(ABC):
         """Return the image that fits each pixel best by itself (float32); the mean where there is no data."""
 
     def start(self) -> np.ndarray:
-        """Return the image that a solve starts from: `estimate`, or where that can mislead, its mean everywhere.
+        """Return the image that a solve starts from: `estimate`, or its mean where that can mislead.
 
         Where the likelihood is not convex a pixel can stay where its own data put it, however unlikely its
         neighbours make that; from a flat image it leaves only as far as its data pull it.
