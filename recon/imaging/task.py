@@ -85,5 +85,5 @@ def image_of(
 def judged(problem: Problem, image: np.ndarray, fits: tuple[HeldOutFit, ...]) -> np.ndarray:
     """Return the uncertainty of an image: calibrated if there are fits, else of each pixel by itself."""
     if fits:
-        return calibrated_uncertainty(problem.likelihood, image, fits, problem.bounds)
+        return calibrated_uncertainty(problem.likelihood, image, fits)
     return local_uncertainty(problem.likelihood, image, problem.bounds)

@@ -8,10 +8,11 @@ import numpy as np
 
 from recon.acquisition.frames import Frames
 from recon.errors import InputError
-from recon.likelihoods.contract import Interval, Likelihood
+from recon.likelihoods.contract import Interval
 from recon.likelihoods.frame_tally import tally
-from recon.likelihoods.inputs import drawing_image, pixelwise_bound
+from recon.likelihoods.inputs import drawing_image
 from recon.likelihoods.mark_table import classify
+from recon.likelihoods.marks import Marks
 from recon.likelihoods.neyman import coefficients
 from recon.likelihoods.neyman_information import line_classes, stack_information
 from recon.likelihoods.poisson import Poisson
@@ -20,7 +21,7 @@ from recon.validation import BLOCK, NONNEGATIVE, refuse
 _LEAST = 1e-8  # yields below it have its derivatives
 
 
-class AnalogMarks(Likelihood):
+class AnalogMarks(Marks):
     """Half the deviance of frames of analog readings, as a function of the yield eta.
 
         value(eta) = sum over pixels and frames of  log P(V; lam, best) - log P(V; lam, eta)
@@ -40,8 +41,6 @@ class AnalogMarks(Likelihood):
     reading is far beyond what electrons and noise explain.
     """
 
-    convex = False
-
     def __init__(self, frames: Frames) -> None:
         if frames.law is None:
             raise InputError("frames hold counts, without a law; give them to PoissonMarks.")
@@ -53,19 +52,14 @@ class AnalogMarks(Likelihood):
         self._tally = tally(codes, self._has_data, self._factors)
 
     @property
-    def has_data(self) -> np.ndarray:
-        """See `Likelihood.has_data`."""
-        return self._has_data
-
-    @property
     def domain(self) -> Interval:
         """eta >= 0: noise alone can explain any reading, if badly."""
         return Interval(0.0, np.inf)
 
     @property
-    def default_bounds(self) -> tuple[float, float]:
-        """Zero, and a value that no pixel's own estimate comes near."""
-        return 0.0, pixelwise_bound(self.estimate())
+    def electrons(self) -> float:
+        """See `Marks.electrons`; by the best yields of the pixels."""
+        return float(np.sum(self._best * self._dose, where=self._has_data)) * self._frames
 
     @property
     def constant(self) -> float:

@@ -9,8 +9,9 @@ from numpy.typing import ArrayLike
 
 from recon.acquisition.frames import Frames
 from recon.errors import InputError
-from recon.likelihoods.contract import Interval, Likelihood
-from recon.likelihoods.inputs import drawing_image, pixelwise_bound
+from recon.likelihoods.contract import Interval
+from recon.likelihoods.inputs import drawing_image
+from recon.likelihoods.marks import Marks
 from recon.likelihoods.neyman import coefficients
 from recon.likelihoods.neyman_information import frame_information
 from recon.likelihoods.poisson import Poisson
@@ -21,7 +22,7 @@ _CLIMB = 6  # steps towards the best image
 _SHIFT = Range("shifts in pixels between -1e6 and 1e6", -1e6, 1e6)
 
 
-class MovingFrames(Likelihood):
+class MovingFrames(Marks):
     """Half the deviance of frames of electron counts that have moved, as a function of the yield at rest.
 
         value(eta) = sum over frames f and their pixels p of
@@ -43,8 +44,6 @@ class MovingFrames(Likelihood):
 
     Raises InputError for readings, and for shifts of another shape or so large that no pixel is left.
     """
-
-    convex = False
 
     def __init__(self, frames: Frames, shifts: ArrayLike) -> None:
         from recon.likelihoods import moving_frames_kernels as kernels
@@ -84,19 +83,14 @@ class MovingFrames(Likelihood):
             raise InputError("shifts moves every usable pixel off the image; give shifts in pixels.")
 
     @property
-    def has_data(self) -> np.ndarray:
-        """See `Likelihood.has_data`."""
-        return self._has_data
-
-    @property
     def domain(self) -> Interval:
         """eta > 0, or eta >= 0 if no electron was detected."""
         return Interval(0.0, np.inf, low_open=bool(self._events[0].size))
 
     @property
-    def default_bounds(self) -> tuple[float, float]:
-        """Zero, and a value that no pixel's own estimate comes near."""
-        return 0.0, pixelwise_bound(self.estimate())
+    def electrons(self) -> float:
+        """See `Marks.electrons`."""
+        return float(self._events[2].sum(dtype=np.float64))
 
     @property
     def constant(self) -> float:

@@ -11,9 +11,10 @@ from scipy.interpolate import CubicSpline
 from recon.acquisition.frames import Frames
 from recon.errors import InputError
 from recon.likelihoods import neyman_kernels as kernels
-from recon.likelihoods.contract import Interval, Likelihood
+from recon.likelihoods.contract import Interval
 from recon.likelihoods.frame_tally import FrameTally, tally
-from recon.likelihoods.inputs import drawing_image, pixelwise_bound
+from recon.likelihoods.inputs import drawing_image
+from recon.likelihoods.marks import Marks
 from recon.likelihoods.neyman import coefficients
 from recon.likelihoods.neyman_estimate import best_yield
 from recon.likelihoods.neyman_information import line_classes, stack_information
@@ -24,7 +25,7 @@ _FEW = 4096  # pixels below which a spline does not pay
 _NODES = 64  # of it, for a factor e of yield
 
 
-class PoissonMarks(Likelihood):
+class PoissonMarks(Marks):
     """Half the deviance of frames of electron counts, as a function of the yield eta.
 
         value(eta) = sum over pixels and frames of  log P(y; lam, best) - log P(y; lam, eta)
@@ -41,8 +42,6 @@ class PoissonMarks(Likelihood):
     Raises InputError if a count is too large to be one of electrons, or if the frames hold readings.
     """
 
-    convex = False
-
     def __init__(self, frames: Frames) -> None:
         if frames.law is not None:
             raise InputError("frames hold analog readings, of law=MarkLaw(...); give them to AnalogMarks.")
@@ -54,19 +53,14 @@ class PoissonMarks(Likelihood):
         self._electrons = self._tally.electrons.reshape(self.shape)
 
     @property
-    def has_data(self) -> np.ndarray:
-        """See `Likelihood.has_data`."""
-        return self._has_data
-
-    @property
     def domain(self) -> Interval:
         """eta > 0, or eta >= 0 if no electron was detected."""
         return Interval(0.0, np.inf, low_open=bool(self._electrons.any()))
 
     @property
-    def default_bounds(self) -> tuple[float, float]:
-        """Zero, and a value that no pixel's own estimate comes near."""
-        return 0.0, pixelwise_bound(self.estimate())
+    def electrons(self) -> float:
+        """See `Marks.electrons`."""
+        return float(self._electrons.sum(dtype=np.float64))
 
     @property
     def constant(self) -> float:

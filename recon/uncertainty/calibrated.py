@@ -40,7 +40,7 @@ LEAST = 0.02  # of the mean of an image: taken where it is less, for the informa
 
 
 def calibrated_uncertainty(
-    likelihood: Likelihood, image: np.ndarray, fits: Sequence[HeldOutFit], bounds: tuple[float, float]
+    likelihood: Likelihood, image: np.ndarray, fits: Sequence[HeldOutFit]
 ) -> np.ndarray:
     """Return the standard uncertainty of each pixel (float32): 68 % of true values lie within it.
 
@@ -54,9 +54,6 @@ def calibrated_uncertainty(
     factors = _factors(list(_told(parts, edgy, fits)))
     u = STANDARD * np.sqrt(np.tensordot(factors, parts, 1))
     u = np.where(likelihood.has_data, u, np.maximum(u, image.std()))
-    low, high = bounds
-    if np.isfinite(high - low):
-        u = np.minimum(u, (high - low) / np.sqrt(12.0))
     return u.astype(np.float32)
 
 
@@ -84,6 +81,8 @@ def _told(
 ) -> Iterator[tuple[NDArray, float, float]]:
     """Yield what neighbours share, for each kind of pixel: expected of each part, found, and its error."""
     level = float(np.mean(parts[2])) / OWN
+    if not level > 0.0:
+        return
     shared = [_shared(fit) for fit in fits]
     larger = (1.0 - 1.0 / len(fits)) ** -GROWTH
     for kind in range(len(EDGES) + 1):

@@ -25,10 +25,11 @@ def local_uncertainty(likelihood: Likelihood, image: np.ndarray, bounds: tuple[f
     with np.errstate(divide="ignore", invalid="ignore"):
         level = np.full(x.shape, float(np.mean(x)))
         u = np.nan_to_num(1.0 / np.sqrt(likelihood.fisher_information(level)), posinf=0.0)
+        u = np.where(u > 0.0, u, widest)  # a law at zero has no width to begin with
         for _ in range(30):  # a contraction by a half or better for counting laws
             before = u
             u = np.nan_to_num(1.0 / np.sqrt(likelihood.fisher_information(x + u)), posinf=widest)
             if np.all(np.abs(u - before) <= CLOSE * u):
                 break
-    u = np.where(seen, np.minimum(u, widest), widest)
+    u = np.where(seen, u, widest)
     return u.astype(np.float32)
