@@ -116,7 +116,7 @@ def depth(
     tolerance = TOLERANCE if effort.tolerance is None else effort.tolerance
     is_open = [term.weight is None for term in prior.terms()]
     enough, choice, halves = likelihood.can_be_shared_out, None, ()
-    if effort.weight == "auto" and any(is_open) and enough:
+    if effort.weight != "rule" and any(is_open) and enough:
         terms, choice, halves = chosen_terms(terms, is_open, likelihood, start, bounds, tolerance)
     problem = Problem(likelihood, terms, bounds)
     told = effort.callback

@@ -37,7 +37,9 @@ def reconstruct(
     tolerance: see `recon.solve`; 5e-4 if left out, for depth 1e-2.
     max_iterations: see `recon.solve`.
     weight: how weights that the priors leave open are set: "auto" = the one that predicts held-out data best
-        (`recon.weights`; that of depth by the rule of thumb), "rule" = a rule of thumb for the data.
+        (`recon.weights`), "rule" = a rule of thumb for the data, "discrepancy" = residuals as large as noise,
+        "risk" = least unbiased estimate of the squared error, for Poisson counts and Gaussian readings
+        (`recon.weights.whole_data`). For depth the last two are as "auto".
     unknown_current, moving: for Frames, whether to estimate the dose of every line from the frames, and
         whether to register frames that moved; see `recon.imaging.electron_yield`.
     callback: called with the name of the image and the state, as solving goes on; True stops that image.

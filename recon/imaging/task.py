@@ -29,7 +29,7 @@ class Effort:
     callback: Callable[[str, State], object] | None = None
     """Called with the name of the image and the state."""
     weight: str = "auto"
-    """How to set weights that a prior leaves open: "auto" by held-out data, "rule" by a rule of thumb."""
+    """How to set weights that a prior leaves open, see `recon.reconstruct`."""
     judge: bool = True
     """Whether to hold data out for the uncertainty; if not, it is that of each pixel by itself."""
 

@@ -144,6 +144,11 @@ class Likelihood(ABC):
         """Whether the `score_map` of unlike pixels may be summed as it is; if not, over their information."""
         return False
 
+    @property
+    def has_linear_score(self) -> bool:
+        """Whether gradient(x) / fisher_information(x) is x less an unbiased estimate that no x enters."""
+        return False
+
     # Convex likelihoods ------------------------------------------------------------------------
 
     def prox(self, v: np.ndarray, step: float) -> np.ndarray:

@@ -170,6 +170,11 @@ class Gaussian(Likelihood):
         return pairs
 
     @property
+    def has_linear_score(self) -> bool:
+        """See `Likelihood.has_linear_score`."""
+        return True
+
+    @property
     def scores_add_up(self) -> bool:
         """See `Likelihood.scores_add_up`."""
         return True

@@ -162,6 +162,11 @@ class Poisson(Likelihood):
         return float(self._count.sum(dtype=np.float64)) >= LEAST_SHARED
 
     @property
+    def has_linear_score(self) -> bool:
+        """See `Likelihood.has_linear_score`."""
+        return True
+
+    @property
     def scores_add_up(self) -> bool:
         """See `Likelihood.scores_add_up`."""
         return True

@@ -97,7 +97,7 @@ class _Path:
                     _pilot(fold.score, image) for fold, image in zip(self.folds, images, strict=True)
                 ]
             self.scores[key] = [
-                pilot * fold.score.score_map(_above_zero(image))
+                pilot * fold.score.score_map(lifted(image))
                 for fold, image, pilot in zip(self.folds, images, self.pilots, strict=True)
             ]
         return sum(float(np.sum(part)) for part in self.scores[key])
@@ -123,7 +123,7 @@ def fitted(problem: Problem, start: np.ndarray | None, tolerance: float = TOLERA
     return solve(problem, tolerance=tolerance, max_iterations=LIMIT, start=start).image
 
 
-def _above_zero(image: np.ndarray) -> np.ndarray:
+def lifted(image: np.ndarray) -> np.ndarray:
     return np.maximum(image, FLOOR * max(float(image.mean()), 0.0))
 
 
@@ -135,7 +135,7 @@ def _pilot(score: Likelihood, image: np.ndarray) -> np.ndarray | float:
     """
     if score.scores_add_up:
         return 1.0
-    information = score.fisher_information(_above_zero(image))
+    information = score.fisher_information(lifted(image))
     seen = score.has_data & np.isfinite(information) & (information > 0.0)
     weight = np.zeros(image.shape)
     weight[seen] = 1.0 / information[seen]
@@ -149,10 +149,7 @@ def held_out_scores(fits: Sequence[Sequence[HeldOutFit]]) -> list[np.ndarray]:
     """
     pilots = [_pilot(fit.score, fit.image) for fit in fits[0]]
     return [
-        sum(
-            pilot * fit.score.score_map(_above_zero(fit.image))
-            for pilot, fit in zip(pilots, each, strict=True)
-        )
+        sum(pilot * fit.score.score_map(lifted(fit.image)) for pilot, fit in zip(pilots, each, strict=True))
         for each in fits
     ]
 
@@ -191,7 +188,7 @@ def choose(
     compared = [path.difference(f, best) for f in factors]
     score, error = (np.array(column) for column in zip(*compared, strict=True))
     at_edge = best in (factors[0], factors[-1])
-    factor = best if at_edge else _vertex(factors, score, int(np.searchsorted(factors, best)))
+    factor = best if at_edge else vertex(factors, score, int(np.searchsorted(factors, best)))
     second = _second_order(path, folds[0], best) if second_order else None
     note = ""
     if at_edge:
@@ -200,7 +197,7 @@ def choose(
     return chosen, path.images[best]
 
 
-def _vertex(factors: np.ndarray, score: np.ndarray, k: int) -> float:
+def vertex(factors: np.ndarray, score: np.ndarray, k: int) -> float:
     """Return the factor at the vertex of the parabola through the best score and its neighbours."""
     a, b, c = score[k - 1 : k + 2]
     bend = a - 2.0 * b + c

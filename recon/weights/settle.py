@@ -12,10 +12,11 @@ from recon.likelihoods.contract import Likelihood
 from recon.problem import Prior, Problem, Sum
 from recon.weights.held_out import Choice, Fold, HeldOutFit, at_factor, choose, fitted
 from recon.weights.thumb import for_part, typical_information, weigh
+from recon.weights.whole_data import WHOLE_DATA
 
 FOLDS = 3
 SEED = 20_240_517  # of the folds: the same data give the same weight
-RULES = ("auto", "rule")
+RULES = ("auto", "rule", *WHOLE_DATA)
 
 Pairs = Sequence[tuple[Likelihood, Likelihood]]
 
@@ -52,7 +53,8 @@ def settle(
 ) -> Settled:
     """Return the priors, every weight set, and how they were chosen.
 
-    rule: "auto" = by held-out data (`held_out.choose`), "rule" = the rule of thumb.
+    rule: "auto" = by held-out data (`held_out.choose`), "rule" = the rule of thumb, "discrepancy" and "risk"
+        = by all data (`whole_data`).
     folds: called with a number and a seed, gives the likelihoods to fit and to score; that of the
         likelihood if left out.
     """
@@ -65,6 +67,9 @@ def settle(
         nothing = np.empty(0)
         note = "too few detections to hold any out: the weight is the rule of thumb's"
         return Settled(settled, Choice(1.0, None, nothing, nothing, nothing, 0, False, note))
+    if rule in WHOLE_DATA:
+        chosen = WHOLE_DATA[rule](likelihood, settled, is_open, bounds)
+        return Settled(at_factor(settled, is_open, chosen.factor), chosen)
     pairs = (folds or likelihood.folds)(FOLDS, SEED)
     chosen, images = choose(
         [Fold(fit, score, tuple(weigh(prior, fit)), is_open, _wider(bounds, fit)) for fit, score in pairs],
