@@ -24,6 +24,7 @@ examples:
   fewcount reconstruct bench.h5 --prior generalized-variation --out results
   fewcount simulate frames yield.npy --dose 0.125 --frames 160 --seed 1 --out coupon.h5
   fewcount reconstruct coupon.h5 --json --quiet > summary.json
+  fewcount compare coupon.h5 --prior total-variation --prior smoothness
 
 """
 
@@ -42,6 +43,20 @@ examples:
   fewcount reconstruct bench.h5
   fewcount reconstruct bench.h5 --prior total-variation --weight 20 --out smoother
   fewcount reconstruct coupon.h5 --tolerance 1e-5 --json
+  fewcount reconstruct coupon.h5 --fit
+
+"""
+
+COMPARE = """\
+Reconstruct an acquisition file under several priors, each with the weight that predicts held-out data best,
+and say which of them predicts those data best, and whether the difference is more than chance. Written are
+the images with their uncertainty (float32 OME-TIFF), all of them in comparison.png, and comparison.json. For
+time tags it is the prior of the depth image that is compared.
+"""
+COMPARE_EXAMPLES = """\
+examples:
+  fewcount compare coupon.h5 --prior total-variation --prior generalized-variation
+  fewcount compare bench.h5 --prior total-variation --prior smoothness --out compared --json
 
 """
 
@@ -88,6 +103,7 @@ def parser() -> Parser:
     common = _common(argparse.SUPPRESS)  # so that a command does not undo what stands before it
     _demo(commands, common)
     _reconstruct(commands, common)
+    _compare(commands, common)
     _simulate(commands, common)
     return top
 
@@ -143,7 +159,8 @@ def _reconstruct(commands: argparse._SubParsersAction, common: argparse.Argument
         "--weight",
         metavar="W",
         type=_real,
-        help="weight of that prior, above 0; larger is smoother (default: a rule of thumb from the data)",
+        help="weight of that prior, above 0; larger is smoother (default: the one that predicts held-out data"
+        " best)",
     )
     command.add_argument(
         "--unknown-current",
@@ -155,6 +172,47 @@ def _reconstruct(commands: argparse._SubParsersAction, common: argparse.Argument
         action="store_true",
         help="register the frames and fit each where it was (a stage that drifts)",
     )
+    command.add_argument(
+        "--fit",
+        action="store_true",
+        help="say whether model and images fit the data, what does not and why (about twenty more solves)",
+    )
+    _add_limits(command)
+    command.add_argument(
+        "--out",
+        metavar="DIR",
+        help="folder to write to (default: fewcount-out/ and FILE's name)",
+    )
+    command.set_defaults(module="recon.cli.reconstruct")
+
+
+def _compare(commands: argparse._SubParsersAction, common: argparse.ArgumentParser) -> None:
+    command = commands.add_parser(
+        "compare",
+        parents=[common],
+        description=COMPARE,
+        epilog=COMPARE_EXAMPLES + EXIT_CODES,
+        help="an acquisition file under several priors, judged by held-out data",
+    )
+    command.add_argument("file", metavar="FILE", help="acquisition file (HDF5)")
+    command.add_argument(
+        "--prior",
+        metavar="NAME",
+        action="append",
+        default=[],
+        help="a prior to compare; give it two times or more: total-variation, generalized-variation,"
+        " wavelet-sparsity or smoothness",
+    )
+    _add_limits(command)
+    command.add_argument(
+        "--out",
+        metavar="DIR",
+        help="folder to write to (default: fewcount-out/ and FILE's name with -compared)",
+    )
+    command.set_defaults(module="recon.cli.compare")
+
+
+def _add_limits(command: argparse.ArgumentParser) -> None:
     command.add_argument(
         "--tolerance",
         metavar="T",
@@ -168,12 +226,6 @@ def _reconstruct(commands: argparse._SubParsersAction, common: argparse.Argument
         default=30_000,
         help="iterations after which to stop in any case (default: %(default)d)",
     )
-    command.add_argument(
-        "--out",
-        metavar="DIR",
-        help="folder to write to (default: fewcount-out/ and FILE's name)",
-    )
-    command.set_defaults(module="recon.cli.reconstruct")
 
 
 def _simulate(commands: argparse._SubParsersAction, common: argparse.ArgumentParser) -> None:

@@ -17,10 +17,13 @@ from recon.cli.version import version
 from recon.files import load, load_note, load_truth
 from recon.files.json_text import json_text, write_json
 from recon.files.tiff import write_tiff
-from recon.imaging import DepthImage, Reconstruction, reconstruct
+from recon.fit import ImageFit, goodness
+from recon.imaging import DepthImage, PhysicalImage, Reconstruction, reconstruct
 from recon.report import words
 from recon.report.data_images import Acquisition, data_image, pixel_by_pixel
 from recon.report.figure import Picture, save_picture
+from recon.report.fit_figure import save_fit_picture
+from recon.report.fit_record import fit_record
 from recon.report.record import acquisition_record, image_record
 
 
@@ -33,6 +36,7 @@ class Settings:
     max_iterations: int = 30_000
     unknown_current: bool = False
     moving: bool = False
+    fit: bool = False  # whether to ask afterwards if the model fits
 
 
 @dataclass(frozen=True, eq=False)
@@ -75,13 +79,21 @@ class Job:
                 unknown_current=self.settings.unknown_current,
                 moving=self.settings.moving,
             )
+            fits: Mapping[str, ImageFit] = {}
+            if self.settings.fit:
+                progress.step("asking whether the model fits")
+                fits = goodness(result, callback=progress.of_fit).images
             progress.step("writing")
-            records = self._write(source, result)
+            records = self._write(source, result, fits)
         self.images.update(records)
         if not (quiet or self.options.json):
             from recon.cli.table import print_summary
 
             print_summary(source.name, self.acquisitions[source.name], records)
+            if fits:
+                from recon.cli.fit_table import print_fits
+
+                print_fits(records)
 
     def finish(self) -> int:
         """Write diagnostics.json, say where everything is and what is wrong; return the exit code."""
@@ -93,23 +105,18 @@ class Job:
         }
         write_json(self.folder / "diagnostics.json", record)
         if self.options.json:
-            short = {name: _without_trace(image) for name, image in self.images.items()}
+            short = {name: without_trace(image) for name, image in self.images.items()}
             sys.stdout.write(json_text(record | {"folder": str(self.folder), "images": short}))
         elif not self.options.quiet:
             from recon.cli.table import print_line
 
             print_line(f"Images, pictures and diagnostics.json are in {self.folder}")
-        for name, image in self.images.items():
-            if not words.is_converged(image):
-                status = image["status"]
-                print(
-                    f"fewcount: {words.spelled(name)} is not converged: {status['meaning']};"
-                    f" to do: {status['remedy']}.",
-                    file=sys.stderr,
-                )
+        complain_of_images(self.images)
         return 0 if record["converged"] else 1
 
-    def _write(self, source: Source, result: Reconstruction) -> dict[str, dict[str, Any]]:
+    def _write(
+        self, source: Source, result: Reconstruction, fits: Mapping[str, ImageFit]
+    ) -> dict[str, dict[str, Any]]:
         acquisition = acquisition_record(source.acquisition, source.note)
         self.acquisitions[source.name] = acquisition
         data = data_image(source.acquisition)
@@ -131,11 +138,37 @@ class Job:
                     write_tiff(self.folder / files[part], values, f"{words.spelled(part)} of {name}", "1")
             picture = Picture(name, image, record, acquisition, data, alone[name], truth, source.name)
             save_picture(self.folder / files["picture"], picture)
+            if name in fits:
+                records[name]["fit"] = self._write_fit(files, source, image, fits[name])
         return records
+
+    def _write_fit(
+        self, files: dict[str, str], source: Source, image: PhysicalImage, fit: ImageFit
+    ) -> dict[str, Any]:
+        if fit.histogram is not None:
+            files["residuals"] = f"{fit.name}_residuals.tif"
+            write_tiff(
+                self.folder / files["residuals"], fit.residuals, f"quantile residuals of {fit.name}", "1"
+            )
+        files["fit"] = f"{fit.name}_fit.png"
+        save_fit_picture(self.folder / files["fit"], fit, image, source.name)
+        return fit_record(fit)
 
 
 ENDINGS = {"image": ".tif", "uncertainty": "_uncertainty.tif", "picture": ".png"}
 
 
-def _without_trace(record: Mapping[str, Any]) -> dict[str, Any]:
+def complain_of_images(images: Mapping[str, Mapping[str, Any]]) -> None:
+    """Name the images that are not converged on standard error, by their records."""
+    for name, image in images.items():
+        if not words.is_converged(image):
+            status = image["status"]
+            print(
+                f"fewcount: {words.spelled(name)} is not converged: {status['meaning']};"
+                f" to do: {status['remedy']}.",
+                file=sys.stderr,
+            )
+
+
+def without_trace(record: Mapping[str, Any]) -> dict[str, Any]:
     return {name: value for name, value in record.items() if name != "trace"}

@@ -37,6 +37,7 @@ class SolveProgress:
             disable=hidden or not console.is_terminal,
         )
         self._now: int | None = None
+        self.of = ""  # what the images that follow belong to
 
     def __enter__(self) -> SolveProgress:
         self._bars.start()
@@ -50,12 +51,21 @@ class SolveProgress:
         self._finish()
         self._now = self._bars.add_task(words, total=None, gap="")
 
+    def of_fit(self, name: str, share: float) -> None:
+        """Show which share of the simulations of an image's fit is done."""
+        key = f"fit of {name}"
+        if self._now is None or self._tasks.get(key) != self._now:
+            self._finish()
+            self._tasks[key] = self._now = self._bars.add_task(f"{spelled(name)}: fit", total=1.0, gap="")
+        self._bars.update(self._tasks[key], completed=share)
+
     def __call__(self, name: str, state: State) -> None:
         """Show a state of the solve of an image."""
         if self._now is None or self._tasks.get(name) != self._now:  # an image may be solved for again
             self._finish()
             self._first[name] = state.relative_gap
-            self._tasks[name] = self._now = self._bars.add_task(spelled(name), total=1.0, gap="")
+            words = ": ".join(filter(None, (self.of, spelled(name))))
+            self._tasks[name] = self._now = self._bars.add_task(words, total=1.0, gap="")
         tolerance = self._tolerance or (depth.TOLERANCE if name == "depth" else task.TOLERANCE)
         self._bars.update(
             self._tasks[name],

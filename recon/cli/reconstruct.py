@@ -18,7 +18,12 @@ def run(options: Namespace) -> int:
         options.prior, options.weight, isinstance(source.acquisition, TimeTags | TimeHistogram)
     )
     settings = Settings(
-        prior, options.tolerance, options.max_iterations, options.unknown_current, options.moving
+        prior,
+        options.tolerance,
+        options.max_iterations,
+        options.unknown_current,
+        options.moving,
+        options.fit,
     )
     out = Path("fewcount-out", Path(options.file).stem) if options.out is None else Path(options.out)
     with output_folder(out) as folder:

@@ -10,6 +10,8 @@ from rich.table import Table
 from rich.text import Text
 
 from recon.report.words import (
+    certificate_in_words,
+    coverage_in_words,
     data_in_words,
     is_converged,
     priors_in_words,
@@ -20,8 +22,9 @@ from recon.report.words import (
 
 Record = Mapping[str, Any]
 
-ALONE = "Uncertainty: standard, of a pixel by its own data alone."
-OF_DEPTH = ALONE[:-1] + "; of depth, with its neighbours', the surface being right."
+CALIBRATED = "Uncertainty: standard, calibrated on held-out data so that 68 % of true values lie within it"
+ALONE = "Uncertainty: standard, not calibrated: nothing could be held out"
+OF_DEPTH = "; that of depth holds where the surface is the right one"
 AGAINST_TRUTH = (
     " Errors: root mean square and median absolute, against the truth; conventional: of each pixel by itself."
 )
@@ -30,11 +33,9 @@ AGAINST_TRUTH = (
 def print_summary(name: str, acquisition: Record, images: Mapping[str, Record]) -> None:
     """Print what an acquisition holds, and its images side by side."""
     console = Console(highlight=False)
-    console.print(Text(name, style="bold"), Text(data_in_words(acquisition)), soft_wrap=True)
-    if acquisition["note"]:
-        console.print(Text(acquisition["note"], style="dim"), soft_wrap=True)
+    print_head(console, name, acquisition)
     known = any(record["error"] is not None for record in images.values())
-    note = OF_DEPTH if "depth" in images else ALONE
+    note = uncertainty_note(images)
     table = Table(caption=note + AGAINST_TRUTH if known else note, caption_justify="left")
     table.add_column("", no_wrap=True)
     for image in images:
@@ -43,10 +44,31 @@ def print_summary(name: str, acquisition: Record, images: Mapping[str, Record]) 
     for label, cell in rows:
         table.add_row(label, *(cell(record) for record in images.values()))
     console.print(table)
+    print_notes(console, images)
+    console.print()
+
+
+def print_head(console: Console, name: str, acquisition: Record) -> None:
+    """Print what an acquisition holds, and its note."""
+    console.print(Text(name, style="bold"), Text(data_in_words(acquisition)), soft_wrap=True)
+    if acquisition["note"]:
+        console.print(Text(acquisition["note"], style="dim"), soft_wrap=True)
+
+
+def print_notes(console: Console, images: Mapping[str, Record]) -> None:
+    """Print what a reader should know of each image."""
     for image, record in images.items():
         for note in record["notes"]:
             console.print(Text(f"{spelled(image)}: {note.rstrip('.')}.", style="bold"), soft_wrap=True)
-    console.print()
+
+
+def uncertainty_note(images: Mapping[str, Record]) -> str:
+    """Return what the uncertainties of these images are."""
+    without = [spelled(name) for name, record in images.items() if not record["calibrated"]]
+    note = ALONE if len(without) == len(images) else CALIBRATED
+    if 0 < len(without) < len(images):
+        note += f" (that of {' and '.join(without)} is not: nothing could be held out)"
+    return note + (OF_DEPTH if "depth" in images else "") + "."
 
 
 def print_line(text: str) -> None:
@@ -54,7 +76,8 @@ def print_line(text: str) -> None:
     Console(highlight=False).print(Text(text), soft_wrap=True)
 
 
-def _status(record: Record) -> Text:
+def status_cell(record: Record) -> Text:
+    """Return how the solve ended, in colour."""
     return Text(status_in_words(record), style="green" if is_converged(record) else "bold white on red")
 
 
@@ -78,7 +101,8 @@ _ROWS: list[tuple[str, Callable[[Record], Text | str]]] = [
     ("iterations", lambda r: str(r["iterations"])),
     ("relative gap", lambda r: f"{r['relative_gap']:.2g}"),
     ("time", lambda r: f"{r['seconds']:.2f} s"),
-    ("status", _status),
+    ("status", status_cell),
+    ("certificate", certificate_in_words),
 ]
 _DEPTH: list[tuple[str, Callable[[Record], Text | str]]] = [
     ("without target", lambda r: _share(r, "without_target")),
@@ -89,4 +113,5 @@ _ERRORS: list[tuple[str, Callable[[Record], Text | str]]] = [
     ("  conventional", lambda r: _error(r, "rmse", "conventional")),
     ("median error", lambda r: _error(r, "median_absolute")),
     ("  conventional", lambda r: _error(r, "median_absolute", "conventional")),
+    ("truth within 68 / 95 %", coverage_in_words),
 ]

@@ -132,7 +132,8 @@ def side_panels(picture: Picture) -> list[Panel | None]:
     data = Panel("Data", values, label, "magma", (0.0, spread(values)[1]), whole)
     alone = Panel("Conventional, pixel by pixel", picture.conventional, look.label, look.colours, limits)
     label = f"standard uncertainty{unit}"
-    unsure = Panel("Standard uncertainty", uncertainty, label, "cividis", spread(uncertainty))
+    title = "Uncertainty, calibrated" if image.held_out else "Uncertainty, not calibrated"
+    unsure = Panel(title, uncertainty, label, "cividis", spread(uncertainty))
     if picture.truth is None:
         return [data, alone, unsure, None]
     truth = Panel("Truth", picture.truth, look.label, look.colours, limits)
@@ -166,6 +167,10 @@ def _head(picture: Picture, width: float) -> list[tuple[str, dict[str, Any]]]:
     ]
     if record["error"] is not None:
         lines.append((words.error_in_words(record), plain))
+    uncertain = f"uncertainty {words.calibration_in_words(record)}"
+    if record["coverage"] is not None:
+        uncertain += f"; truth within the 68 / 95 % interval: {words.coverage_in_words(record)}"
+    lines.append((uncertain, plain))
     if words.is_converged(record):
         status, style = f"converged, {solved}", {"fontsize": 9, "color": "#2e6b34"}
     else:

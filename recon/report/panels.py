@@ -11,6 +11,7 @@ import numpy as np
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.axis import Axis
+    from matplotlib.image import AxesImage
 
     from recon.diagnostics import Trace
 
@@ -58,7 +59,7 @@ def symmetric(image: np.ndarray) -> tuple[float, float]:
     return -high, high
 
 
-def draw_panel(axes: Axes, panel: Panel, main: bool = False) -> None:
+def draw_panel(axes: Axes, panel: Panel, main: bool = False, bar: bool = True) -> None:
     """Draw an image with a colour bar of its height; pixels are square unless the image is a mere strip."""
     import matplotlib
 
@@ -82,9 +83,25 @@ def draw_panel(axes: Axes, panel: Panel, main: bool = False) -> None:
     axes.set(xlim=(-0.5, columns - 0.5), ylim=(rows - 0.5, -0.5), anchor="W")
     style = {"fontsize": 13, "fontweight": "bold"} if main else {"fontsize": 10}
     axes.set_title(panel.title, loc="left", **style)
+    if bar:
+        _draw_bar(axes, panel, shown, _width(axes, rows / columns if square else None), main)
+    if main:
+        axes.tick_params(labelsize=8, length=3, color="#888888", labelcolor="#555555")
+        axes.set_xlabel("column", fontsize=8, color="#555555")
+        axes.set_ylabel("row", fontsize=8, color="#555555")
+        _whole_ticks(axes.xaxis, axes.yaxis)
+    else:
+        axes.set_xticks([])
+        axes.set_yticks([])
+    for spine in axes.spines.values():
+        spine.set_linewidth(0.5)
+
+
+def _draw_bar(axes: Axes, panel: Panel, shown: AxesImage, width: float, main: bool) -> None:
+    """Draw the colour bar beside an image that is so many inches wide."""
+    low, high = panel.limits
     finite = _sample(panel.values)
     below, above = bool(np.any(finite < low)), bool(np.any(finite > high))
-    width = _width(axes, rows / columns if square else None)
     bar = axes.figure.colorbar(
         shown,
         cax=axes.inset_axes((1 + 0.06 / width, 0.0, (0.17 if main else 0.12) / width, 1.0)),
@@ -97,16 +114,6 @@ def draw_panel(axes: Axes, panel: Panel, main: bool = False) -> None:
     bar.outline.set_linewidth(0.5)
     if panel.whole:
         _whole_ticks(bar.ax.yaxis)
-    if main:
-        axes.tick_params(labelsize=8, length=3, color="#888888", labelcolor="#555555")
-        axes.set_xlabel("column", fontsize=8, color="#555555")
-        axes.set_ylabel("row", fontsize=8, color="#555555")
-        _whole_ticks(axes.xaxis, axes.yaxis)
-    else:
-        axes.set_xticks([])
-        axes.set_yticks([])
-    for spine in axes.spines.values():
-        spine.set_linewidth(0.5)
 
 
 def draw_course(axes: Axes, trace: Trace, tolerance: float) -> None:

@@ -9,7 +9,9 @@ import numpy as np
 
 from recon.acquisition import Counts, Frames, TimeHistogram, TimeTags
 from recon.imaging import DepthImage
+from recon.imaging.image import SHARES
 from recon.report.data_images import detections
+from recon.report.words import certificate_in_words
 
 if TYPE_CHECKING:
     from recon.imaging import PhysicalImage
@@ -44,7 +46,7 @@ def image_record(
 
     truth: the image it was drawn from, where that is known; `error` is then the root mean square error
         and the median absolute error over all pixels, and those of the conventional image where it has
-        data.
+        data; `coverage` is the share of pixels whose true value is within the 68 % and the 95 % interval.
     """
     seen = ~image.filled
     diagnostics = image.diagnostics
@@ -53,6 +55,7 @@ def image_record(
         "shape": list(image.image.shape),
         "range": [float(image.image.min()), float(image.image.max())],
         "median_uncertainty": float(np.median(image.uncertainty[seen])) if seen.any() else None,
+        "calibrated": bool(image.held_out),
         "filled_pixels": int(np.count_nonzero(image.filled)),
         "priors": [_prior_record(prior) for prior in image.priors],
         "bounds": list(image.bounds),
@@ -65,6 +68,7 @@ def image_record(
         "weight": _choice_record(image),
         "tolerance": image.tolerance,
         "solver": diagnostics.solver,
+        "convex": image.problem.likelihood.convex,
         "objective": diagnostics.objective,
         "dual_value": diagnostics.dual_value,
         "relative_gap": diagnostics.relative_gap,
@@ -73,15 +77,35 @@ def image_record(
         "deviance_per_pixel": diagnostics.deviance_per_pixel,
         "pixels_at_bounds": diagnostics.pixels_at_bounds,
         "error": None,
+        "coverage": None,
         "trace": {name: list(values) for name, values in vars(diagnostics.trace).items()},
     }
+    record["certificate"] = certificate_in_words(record)
     if isinstance(image, DepthImage):
         record |= _depth_record(image)
     if truth is not None:
         record["error"] = _error(image.image, truth)
+        record["coverage"] = _coverage(image, np.asarray(truth))
         if conventional is not None:
             record["error"]["conventional"] = _error(conventional, truth)
     return record
+
+
+def _coverage(image: PhysicalImage, truth: np.ndarray) -> dict[str, Any] | None:
+    """Return the shares of pixels whose truth is in their interval, and how many pixels were asked.
+
+    Of depth those where there is a target on the right surface, which its intervals are about.
+    """
+    asked = np.isfinite(truth)
+    if isinstance(image, DepthImage):
+        asked = asked & (image.target > 0.5) & (image.wrong_surface < 0.5)
+    if not asked.any():
+        return None
+    within = {}
+    for share in SHARES:
+        low, high = image.interval(share)
+        within[f"{100 * share:.0f}"] = float(np.mean((low <= truth)[asked] & (truth <= high)[asked]))
+    return within | {"pixels": int(np.count_nonzero(asked))}
 
 
 def _choice_record(image: PhysicalImage) -> dict[str, Any] | None:

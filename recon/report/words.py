@@ -2,8 +2,14 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from typing import Any
+
+HELD_OUT_SCORE = (
+    "Held-out score: above that of the best prior, and its standard error; squared errors on data that were"
+    " held out, sum over pixels and folds, lower is better"
+)
 
 
 def quantity(value: float | None, unit: str) -> str:
@@ -39,6 +45,49 @@ def status_in_words(record: Mapping[str, Any]) -> str:
     if is_converged(record):
         return f"converged: {status['meaning']}"
     return f"NOT CONVERGED: {status['meaning']}. To do: {status['remedy']}."
+
+
+def certificate_in_words(record: Mapping[str, Any]) -> str:
+    """Return what the dual value of an image record says of all other images, in a sentence.
+
+    Where the likelihood is not convex it is about the convex majorant at the image, and no more.
+    """
+    objective, gap = record["objective"], record["objective"] - record["dual_value"]
+    if not math.isfinite(gap) or gap >= abs(objective):
+        return "nothing says how far an objective can be below this image's: the dual value is no use yet"
+    if gap <= 0.0:
+        below = "an objective below"
+    elif record["relative_gap"] < 0.99 * gap / abs(objective):  # the floor of `relative_gap`
+        below = f"an objective more than {_rounded_up(gap)} below"
+    else:
+        below = f"an objective more than {_rounded_up(100.0 * gap / abs(objective))} % below"
+    times, iterations = len(record["trace"]["iteration"]), record["iterations"]
+    looked = f"looked at {times} times in {iterations} iterations"
+    if record["convex"]:
+        return f"no image within the bounds has {below} this one's ({looked})"
+    return (
+        f"in the convex majorant at this image, no image within the bounds has {below} this one's ({looked});"
+        " the likelihood is not convex, and another image may still be better"
+    )
+
+
+def _rounded_up(value: float) -> str:
+    """Return a number above zero to two digits, never less than it is."""
+    digits = 1 - math.floor(math.log10(value))
+    return f"{math.ceil(value * 10.0**digits) / 10.0**digits:.2g}"
+
+
+def coverage_in_words(record: Mapping[str, Any]) -> str:
+    """Return how often the truth is within the intervals of an image record, where it is known."""
+    coverage = record["coverage"]
+    if coverage is None:
+        return "-"
+    return f"{100 * coverage['68']:.1f} / {100 * coverage['95']:.1f} % of pixels"
+
+
+def calibration_in_words(record: Mapping[str, Any]) -> str:
+    """Return where the uncertainty of an image record comes from."""
+    return "calibrated on held-out data" if record["calibrated"] else "not calibrated: nothing was held out"
 
 
 def data_in_words(record: Mapping[str, Any]) -> str:

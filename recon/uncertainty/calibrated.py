@@ -33,8 +33,8 @@ EDGES = (0.15, 0.6)  # shares of A in u^2 that part smooth, mixed and edgy pixel
 SPREAD = 0.4  # of the logarithm of a factor, and of one that all share, among scenes
 UNSURE = 0.3  # relative, of the correlation of neighbours' errors
 GROWTH = 0.45  # the mean squared error falls with the data to this power
-STANDARD = 0.9  # of u: half the width that holds 68 % of errors
-OF_95 = 2.5  # times that: half the width that holds 95 %
+STANDARD = 0.87  # of u: half the width that holds 68 % of errors
+OF_95 = 2.55  # times that: half the width that holds 95 %
 FEW = 30  # pixels of a kind below which it is not asked
 LEAST = 0.02  # of the mean of an image: taken where it is less, for the information
 

@@ -7,10 +7,11 @@ import dataclasses
 import json
 import sys
 
-from tests.bench import denoising, depth, electron_yield, engine, scale, startup
+from tests.bench import denoising, depth, electron_yield, engine, scale, startup, trust
 from tests.bench.measure import Row
 
-GROUPS = {module.GROUP: module.rows for module in (engine, scale, denoising, startup, depth, electron_yield)}
+MODULES = (engine, scale, denoising, startup, depth, electron_yield, trust)
+GROUPS = {module.GROUP: module.rows for module in MODULES}
 
 
 def main(arguments: list[str] | None = None) -> int:
