@@ -9,7 +9,7 @@ from rich.console import Console
 from rich.table import Table
 from rich.text import Text
 
-from recon.report.fit_record import fit_in_words, statistic_in_words
+from recon.report.fit_record import BESIDE, fit_in_words, is_beside, statistic_in_words
 from recon.report.words import spelled
 
 
@@ -32,11 +32,13 @@ def _print_fit(console: Console, name: str, fit: Mapping[str, Any]) -> None:
     for what in fit["unidentified"]:
         console.print(Text(f"  Not to be told from these data: {what}.", style="dim"), soft_wrap=True)
     if fit["statistics"]:
-        table = Table()
+        beside = any(is_beside(statistic) for statistic in fit["statistics"])
+        table = Table(caption=f"{BESIDE[0].upper()}{BESIDE[1:]}." if beside else None, caption_justify="left")
         table.add_column("", overflow="fold")
         for heading in ("observed", "expected", "standard deviation", "p"):
             table.add_column(heading, justify="right")
         for statistic in fit["statistics"]:
-            table.add_row(*statistic_in_words(statistic), style="bold red" if statistic["denies"] else None)
+            style = "bold red" if statistic["denies"] else "bright_black" if is_beside(statistic) else None
+            table.add_row(*statistic_in_words(statistic), style=style)
         console.print(table)
     console.print()

@@ -202,17 +202,16 @@ def _alarm(axes: Axes) -> None:
 def _head(picture: ComparisonPicture, width: float) -> list[tuple[str, dict[str, Any]]]:
     """Return the lines above the panels and their styles."""
     plain = {"fontsize": 9, "color": "#444444"}
-    converged = all(words.is_converged(record) for record in picture.record["priors"].values())
-    kind, said = words.spelled(picture.comparison.kind), picture.record["verdict"]
-    style = {"fontsize": 10, "fontweight": "bold"}
-    if not converged:
-        box = {"facecolor": ALARM, "edgecolor": ALARM, "boxstyle": "square,pad=0.25"}
-        style |= {"color": "white", "bbox": box}
+    kind = words.spelled(picture.comparison.kind)
+    said, *late = picture.record["verdict"].split("; NOT CONVERGED")
+    bold = {"fontsize": 10, "fontweight": "bold"}
+    box = {"facecolor": ALARM, "edgecolor": ALARM, "boxstyle": "square,pad=0.25"}
     lines = [
         (f"{kind.capitalize()} under several priors", {"fontsize": 16, "fontweight": "bold"}),
         (f"{picture.source}: {words.data_in_words(picture.acquisition)}", plain),
-        (f"{said[0].upper()}{said[1:]}.", style),
-        (f"{words.HELD_OUT_SCORE} ({picture.record['folds']} folds).", plain),
+        (f"{said[0].upper()}{said[1:]}.", bold),
+        *((f"NOT CONVERGED{names}.", bold | {"color": "white", "bbox": box}) for names in late),
+        (f"{words.HELD_OUT_SCORE}.", plain),
     ]
     room = int((width - 0.3) / 0.086)  # inches a character takes
     return [(part, style) for text, style in lines for part in textwrap.wrap(text, room)]

@@ -13,7 +13,7 @@ from recon.files.atomic import replacing
 from recon.fit.quantile_residuals import Histogram
 from recon.report import words
 from recon.report.figure import DPI, LINE, STYLE
-from recon.report.fit_record import fit_in_words, fit_record, statistic_in_words
+from recon.report.fit_record import BESIDE, fit_in_words, fit_record, is_beside, statistic_in_words
 from recon.report.panels import ACCENT, ALARM, Panel, draw_panel
 from recon.report.tag_histogram import tag_histogram
 
@@ -26,7 +26,8 @@ if TYPE_CHECKING:
 
 CELL = 3.4  # inches, the longer side of the map; the height of the other parts
 WIDE, LAW = 4.1, 3.6  # inches: of the table's names and numbers, of the histogram
-LEFT, BOTTOM, BESIDE = 0.35, 0.55, 1.05
+LEFT, BOTTOM, APART = 0.35, 0.55, 1.45
+ROW, FIRST = 0.42, 0.4  # inches, of the table: the height of a statistic, and what is above the first
 RANGE = 3.5  # residuals at the ends of the colours
 FEW = 400  # lone pixels that are ringed, at most
 GOOD = "#2e6b34"
@@ -57,13 +58,13 @@ def draw_fit(fit: ImageFit, image: PhysicalImage, source: str) -> Figure:
     tall = float(np.clip(rows / columns, 0.5, 1.7))
     width, height = (CELL / tall, CELL) if tall > 1 else (CELL, CELL * tall)
     width = 0.0 if fit.histogram is None else width
-    at_law = LEFT + (width + BESIDE if width else 0.3)
+    at_law = LEFT + (width + APART if width else 0.3)
     at_table = at_law + LAW + 0.45
     across = at_table + WIDE + LEFT
     record = fit_record(fit)
     head = _head(fit, record, source, across)
     tests = record["statistics"]
-    high = max(CELL, 0.24 * (len(tests) + 2))
+    high = max(CELL, FIRST + ROW * len(tests) + 0.1)
     whole = (across, BOTTOM + high + 0.5 + LINE * len(head))
     figure = Figure(figsize=whole)
 
@@ -96,7 +97,7 @@ def _draw_histogram(axes: Axes, histogram: Histogram, of_tags: bool) -> None:
     """Draw how many fell into each class, and how many the law expects."""
     edges, middle = histogram.edges, 0.5 * (histogram.edges[1:] + histogram.edges[:-1])
     axes.stairs(histogram.counts, edges, fill=True, color="#b9cfde", label="observed")
-    axes.plot(middle, histogram.expected, color=ACCENT, linewidth=1.5, label="expected")
+    axes.plot(middle, histogram.expected, color=ACCENT, linewidth=1.5, label="law of the true image")
     axes.set_xlim(edges[0], edges[-1])
     axes.set_ylim(bottom=0.0)
     title = "Tags about the surface" if of_tags else "Their histogram"
@@ -114,20 +115,22 @@ def _draw_table(axes: Axes, tests: list[dict[str, Any]], high: float) -> None:
     """Write the statistics line by line; what denies the model stands out."""
     axes.set_axis_off()
     axes.set(xlim=(0.0, WIDE), ylim=(high, 0.0))
-    places = (2.0, 2.62, 3.3, WIDE)  # right ends of the numbers, inches
+    places = (1.8, 2.6, 3.35, WIDE)  # right ends of the numbers, inches
     head = ("observed", "expected", "st. dev.", "p")
     axes.set_title("Statistics", loc="left", fontsize=10)
     for x, text in zip(places, head, strict=True):
         axes.text(x, 0.12, text, fontsize=7.5, color="#555555", ha="right", va="center")
     for line, record in enumerate(tests):
         name, *numbers = statistic_in_words(record)
-        style = {"color": ALARM, "fontweight": "bold"} if record["denies"] else {"color": "black"}
-        y = 0.4 + 0.42 * line
+        style = {"color": "#888888" if is_beside(record) else "black"}
+        if record["denies"]:
+            style = {"color": ALARM, "fontweight": "bold"}
+        y = FIRST + ROW * line
         axes.text(0.0, y, name, fontsize=8, va="center", **style)
         for x, text in zip(places, numbers, strict=True):
             axes.text(x, y + 0.17, text, fontsize=8, ha="right", va="center", **style)
     if not tests:
-        axes.text(0.0, 0.4, "none: too few detections", fontsize=8, va="center")
+        axes.text(0.0, FIRST, "none: too few detections", fontsize=8, va="center")
 
 
 def _head(fit: ImageFit, record: dict[str, Any], source: str, width: float) -> list[tuple[str, dict]]:
@@ -149,5 +152,7 @@ def _head(fit: ImageFit, record: dict[str, Any], source: str, width: float) -> l
         style = {"fontsize": 9, "color": GOOD if record["enough"] else "#444444"}
         lines.append((fit_in_words(record), style))
     lines += [(f"Not to be told from these data: {what}.", plain) for what in record["unidentified"]]
+    if any(is_beside(statistic) for statistic in record["statistics"]):
+        lines.append((f"Statistics in {BESIDE}.", plain))
     room = int((width - LEFT) / 0.083)  # inches a character takes
     return [(part, style) for text, style in lines for part in textwrap.wrap(text, room)]

@@ -10,6 +10,8 @@ from recon.fit.words import NO_MISFIT, NOTHING
 if TYPE_CHECKING:
     from recon.fit import ImageFit, Statistic
 
+BESIDE = "grey: told beside and denying nothing, since the best image, too, has lost some structure"
+
 
 def fit_record(fit: ImageFit) -> dict[str, Any]:
     """Return all that is known of a fit but its maps."""
@@ -37,6 +39,11 @@ def _statistic_record(statistic: Statistic) -> dict[str, Any]:
     }
 
 
+def is_beside(record: Mapping[str, Any]) -> bool:
+    """Whether a statistic record is told for information only, whatever its p."""
+    return record["threshold"] == 0.0
+
+
 def fit_in_words(record: Mapping[str, Any]) -> str:
     """Return the verdict of a fit record in a phrase, its findings by name."""
     said = [f"does not fit: {', '.join(finding['cause'] for finding in record['findings'])}"]
@@ -48,6 +55,11 @@ def fit_in_words(record: Mapping[str, Any]) -> str:
 
 def statistic_in_words(record: Mapping[str, Any]) -> tuple[str, str, str, str, str]:
     """Return name, observed, expected, standard deviation and p of a statistic record."""
-    numbers = (f"{record[key]:.4g}" for key in ("observed", "expected"))
     p = "< 0.0001" if record["p"] < 1e-4 else f"{record['p']:.2g}"
-    return record["name"], *numbers, f"{record['standard_deviation']:.2g}", p
+    deviation = _number(record["standard_deviation"], 2)
+    return record["name"], _number(record["observed"], 4), _number(record["expected"], 4), deviation, p
+
+
+def _number(value: float, digits: int) -> str:
+    """Return a number to so many digits, all of those before the point."""
+    return f"{value:.0f}" if 10.0**digits <= abs(value) < 1e7 else f"{value:.{digits}g}"

@@ -62,7 +62,7 @@ def certificate_in_words(record: Mapping[str, Any]) -> str:
     else:
         below = f"an objective more than {_rounded_up(100.0 * gap / abs(objective))} % below"
     times, iterations = len(record["trace"]["iteration"]), record["iterations"]
-    looked = f"looked at {times} times in {iterations} iterations"
+    looked = f"measured {times} times in {iterations} iterations"
     if record["convex"]:
         return f"no image within the bounds has {below} this one's ({looked})"
     return (

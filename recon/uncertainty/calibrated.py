@@ -17,6 +17,7 @@ given it and their usual spread (a normal law of their logarithms).
 from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
@@ -31,10 +32,12 @@ BLUR = 2.0  # pixels: J is averaged so far
 NEAR = 1.0  # pixels: the window of A
 EDGES = (0.15, 0.6)  # shares of A in u^2 that part smooth, mixed and edgy pixels
 SPREAD = 0.4  # of the logarithm of a factor, and of one that all share, among scenes
-UNSURE = 0.3  # relative, of the correlation of neighbours' errors
+UNSURE = 0.3  # of the logarithm of the correlation of neighbours' errors
+FALL = 0.6  # in a 5 x 5 window that correlation is itself to this power less
+ROUGH = 0.1  # relative, how well that holds
 GROWTH = 0.45  # the mean squared error falls with the data to this power
-STANDARD = 0.87  # of u: half the width that holds 68 % of errors
-OF_95 = 2.55  # times that: half the width that holds 95 %
+STANDARD = 0.84  # of u: half the width that holds 68 % of errors
+OF_95 = 2.6  # times that: half the width that holds 95 %
 FEW = 30  # pixels of a kind below which it is not asked
 LEAST = 0.02  # of the mean of an image: taken where it is less, for the information
 
@@ -51,7 +54,7 @@ def calibrated_uncertainty(
     parts = _parts(likelihood, image, fits)
     total = parts.sum(axis=0)
     edgy = np.digitize(parts[1] / np.maximum(total, 1e-300), EDGES)
-    factors = _factors(list(_told(parts, edgy, fits)))
+    factors = _factors(list(_kinds(parts, edgy, fits)), len(fits))
     u = STANDARD * np.sqrt(np.tensordot(factors, parts, 1))
     u = np.where(likelihood.has_data, u, np.maximum(u, image.std()))
     return u.astype(np.float32)
@@ -76,51 +79,68 @@ def lifted(image: NDArray) -> NDArray:
     return np.maximum(image, LEAST * max(float(image.mean()), 0.0))
 
 
-def _told(
-    parts: NDArray, edgy: NDArray, fits: Sequence[HeldOutFit]
-) -> Iterator[tuple[NDArray, float, float]]:
-    """Yield what neighbours share, for each kind of pixel: expected of each part, found, and its error."""
+@dataclass(frozen=True)
+class _Kind:
+    """What the pixels of a kind say.
+
+    parts: the mean of J, A and F. correlated: what the correlation of neighbours' errors usually is.
+    shared, error: the mean of r_i r_j over neighbours j in a 3 x 3 and in a 5 x 5 window, and their errors.
+    """
+
+    parts: NDArray
+    correlated: float
+    shared: tuple[float, float]
+    error: tuple[float, float]
+
+
+def _kinds(parts: NDArray, edgy: NDArray, fits: Sequence[HeldOutFit]) -> Iterator[_Kind]:
     level = float(np.mean(parts[2])) / OWN
     if not level > 0.0:
         return
-    shared = [_shared(fit) for fit in fits]
-    larger = (1.0 - 1.0 / len(fits)) ** -GROWTH
+    products = [_products(fit) for fit in fits]
     for kind in range(len(EDGES) + 1):
         chosen = edgy == kind
-        products = [product[chosen & known] for product, known in shared]
-        products = np.concatenate(products)
-        if products.size < FEW:
+        near, wide = (np.concatenate([p[w][0][chosen & p[w][1]] for p in products]) for w in (0, 1))
+        if near.size < FEW:
             continue
         mine = parts[:, chosen].mean(axis=1)
-        correlated = np.clip(0.38 - 0.083 * np.log(mine.sum() / level), 0.2, 0.95)
-        error = np.sqrt(2.0 * np.mean(products * products) / products.size)  # a pair is counted twice
-        yield larger * correlated * mine, float(products.mean()), float(error)
+        correlated = float(np.clip(0.38 - 0.083 * np.log(mine.sum() / level), 0.2, 0.95))
+        # a pair is counted twice
+        errors = tuple(float(np.sqrt(2.0 * np.mean(p * p) / p.size)) for p in (near, wide))
+        yield _Kind(mine, correlated, (float(near.mean()), float(wide.mean())), errors)
 
 
-def _shared(fit: HeldOutFit) -> tuple[NDArray, NDArray]:
-    """Return r times the mean r of the 8 neighbours, and where there are both."""
+def _products(fit: HeldOutFit) -> list[tuple[NDArray, NDArray]]:
+    """Return r times the mean r of neighbours, 3 x 3 and 5 x 5, and where there are both."""
     x = lifted(np.asarray(fit.image, np.float64))
     with np.errstate(divide="ignore", invalid="ignore"):
         off = fit.score.gradient(x) / fit.score.fisher_information(x)
     known = fit.score.has_data & np.isfinite(off)
     off = np.where(known, off, 0.0)
-    number = 9.0 * uniform_filter(known.astype(np.float64), 3, mode="constant") - known
-    beside = 9.0 * uniform_filter(off, 3, mode="constant") - off
-    known &= number > 0.5
-    return off * beside / np.maximum(number, 1.0), known
+    out = []
+    for side in (3, 5):
+        number = side**2 * uniform_filter(known.astype(np.float64), side, mode="constant") - known
+        beside = side**2 * uniform_filter(off, side, mode="constant") - off
+        out.append((off * beside / np.maximum(number, 1.0), known & (number > 0.5)))
+    return out
 
 
-def _factors(told: Sequence[tuple[NDArray, float, float]]) -> NDArray:
-    """Return the most probable factors of the three parts."""
+def _factors(kinds: Sequence[_Kind], number: int) -> NDArray:
+    """Return the most probable factors of the three parts; number: of fits."""
     from scipy.optimize import least_squares
+
+    larger = (1.0 - 1.0 / number) ** -GROWTH
 
     def misfit(logarithms: NDArray) -> NDArray:
         factors = np.exp(logarithms[:3] + logarithms[3])
-        out = list(logarithms / SPREAD)
-        for parts, found, error in told:
-            expected = float(factors @ parts)
-            out.append((found - expected) / np.hypot(error, UNSURE * expected))
+        out = [*(logarithms[:4] / SPREAD), *(logarithms[4:] / UNSURE)]
+        for kind, change in zip(kinds, logarithms[4:], strict=True):
+            correlated = min(kind.correlated * np.exp(change), 1.0)
+            expected = larger * correlated * float(factors @ kind.parts)
+            further = expected * correlated**FALL
+            out.append((kind.shared[0] - expected) / kind.error[0])
+            out.append((kind.shared[1] - further) / np.hypot(kind.error[1], ROUGH * further))
         return np.array(out)
 
-    best = least_squares(misfit, np.zeros(4)).x
+    best = least_squares(misfit, np.zeros(4 + len(kinds))).x
     return np.exp(best[:3] + best[3])

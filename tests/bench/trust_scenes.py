@@ -21,7 +21,7 @@ def block_means(image: np.ndarray, side: int) -> np.ndarray:
 
 
 def brightness() -> dict[str, np.ndarray]:
-    """Return images of largest value 1: a photograph, coins, the phantom, the bench, the coupon, two drawn."""
+    """Return images of largest value 1: a photograph, coins, a phantom, bench, coupon, and two drawn."""
     i, j = np.mgrid[:SIZE, :SIZE] / SIZE
     blocks = np.full((SIZE, SIZE), 0.2)
     blocks[30:90, 40:100], blocks[50:60], blocks[100:103, 10:110] = 0.8, 0.5, 1.0
