@@ -80,7 +80,7 @@ def lines_of(record: Mapping[str, Any], best: bool) -> dict[str, str]:
     record: of the prior, from a `comparison_record`. best: whether it has the best score.
     """
     lines = {
-        "weight": " + ".join(f"{prior['weight']:.3g}" for prior in record["priors"]),
+        "weight": " + ".join(words.number(prior["weight"], 3) for prior in record["priors"]),
         "held-out score": score_in_words(record, best),
         "degrees of freedom": (
             f"{record['degrees_of_freedom']:.0f} \u00b1 {record['degrees_of_freedom_standard_error']:.0f}"
@@ -97,7 +97,8 @@ def score_in_words(record: Mapping[str, Any], best: bool) -> str:
     """Return by how much the held-out score of a prior is above the best."""
     if best:
         return "best"
-    said = f"+{record['difference']:.3g} \u00b1 {record['difference_standard_error']:.2g}"
+    error = words.number(record["difference_standard_error"], 2)
+    said = f"+{words.number(record['difference'], 3)} \u00b1 {error}"
     return said if record["as_good"] else f"{said}, worse"
 
 

@@ -6,6 +6,7 @@ from collections.abc import Mapping
 from typing import TYPE_CHECKING, Any
 
 from recon.fit.words import NO_MISFIT, NOTHING
+from recon.report.words import number
 
 if TYPE_CHECKING:
     from recon.fit import ImageFit, Statistic
@@ -56,10 +57,5 @@ def fit_in_words(record: Mapping[str, Any]) -> str:
 def statistic_in_words(record: Mapping[str, Any]) -> tuple[str, str, str, str, str]:
     """Return name, observed, expected, standard deviation and p of a statistic record."""
     p = "< 0.0001" if record["p"] < 1e-4 else f"{record['p']:.2g}"
-    deviation = _number(record["standard_deviation"], 2)
-    return record["name"], _number(record["observed"], 4), _number(record["expected"], 4), deviation, p
-
-
-def _number(value: float, digits: int) -> str:
-    """Return a number to so many digits, all of those before the point."""
-    return f"{value:.0f}" if 10.0**digits <= abs(value) < 1e7 else f"{value:.{digits}g}"
+    observed, expected = (number(record[key], 4) for key in ("observed", "expected"))
+    return record["name"], observed, expected, number(record["standard_deviation"], 2), p

@@ -19,6 +19,11 @@ def quantity(value: float | None, unit: str) -> str:
     return f"{value:.3g}" if unit == "1" else f"{value:.3g} {unit}"
 
 
+def number(value: float, digits: int) -> str:
+    """Return a number to so many digits, but all of those before the point up to ten million."""
+    return f"{value:.0f}" if 10.0**digits <= abs(value) < 1e7 else f"{value:.{digits}g}"
+
+
 def spelled(name: str) -> str:
     """Return a name as words: "electron yield" for electron_yield."""
     return name.replace("_", " ").replace("-", " ")

@@ -8,7 +8,7 @@ import tifffile
 
 import priors
 import recon
-from recon.files import load_truth
+from recon.files import load_truth, save
 
 FILES = {"diagnostics.json", "reflectivity.png", "reflectivity.tif", "reflectivity_uncertainty.tif"}
 
@@ -61,10 +61,22 @@ def test_the_table_says_what_came_out(run, counts_file):
         "total variation, weight",
         "converged",
         "against the truth",
+        "truth within 68 / 95 %",
+        "calibrated on held-out data",
+        "no image within the bounds",
         "results",
     ):
         assert words in ran.out
     assert "NOT CONVERGED" not in ran.out
+
+
+def test_without_a_truth_nothing_is_said_of_it(run, tmp_path):
+    save(tmp_path / "dark.h5", recon.Counts(np.eye(4, 5, dtype=int), 10))
+    ran = run("reconstruct", tmp_path / "dark.h5", "--out", "results")
+    assert ran.code == 0
+    assert "truth" not in ran.out
+    assert "not calibrated: nothing could be held out" in ran.out.replace("\n", " ")
+    assert "calibrated on" not in ran.out
 
 
 def test_quiet_says_nothing(run, counts_file, tmp_path):

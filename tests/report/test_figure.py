@@ -46,9 +46,18 @@ def test_the_image_and_the_truth_share_their_colours(picture, truth):
 
 
 def test_filled_pixels_have_no_uncertainty_to_show(picture):
-    uncertainty = next(panel for panel in images(picture) if panel.title == "Standard uncertainty")
+    uncertainty = next(panel for panel in images(picture) if panel.title == "Uncertainty, calibrated")
     np.testing.assert_array_equal(np.isnan(uncertainty.values), picture.image.filled)
     assert picture.image.filled.any()
+
+
+def test_a_picture_says_where_the_uncertainty_comes_from(picture, truth):
+    assert "uncertainty calibrated on held-out data; truth within" in texts(draw(picture)).replace("\n", " ")
+    image = replace(picture.image, held_out=())
+    alone = replace(picture, image=image, record=image_record(image, truth))
+    written = texts(draw(alone))
+    assert "Uncertainty, not calibrated" in written
+    assert "not calibrated: nothing was held out" in written.replace("\n", " ")
 
 
 def test_colour_bars_name_quantity_and_unit(picture):

@@ -73,6 +73,79 @@ def test_the_root_mean_square_is_not_the_median(image):
     assert "conventional" not in error
 
 
+def test_coverage_counts_the_pixels_whose_truth_is_in_the_interval(image):
+    truth = image.image.astype(float)
+    truth[5] += 1.5 * image.uncertainty[5]  # beyond the 68 % interval, within the 95 % one
+    truth[6] += 3.0 * image.uncertainty[6]
+    truth[7] = np.nan
+    coverage = image_record(image, truth)["coverage"]
+    assert coverage["pixels"] == truth.size - 20
+    assert coverage["68"] == pytest.approx(1.0 - 40 / 300, abs=0.01)
+    assert coverage["95"] == pytest.approx(1.0 - 20 / 300, abs=0.01)
+    assert image_record(image)["coverage"] is None
+    assert image_record(image, np.full(truth.shape, np.nan))["coverage"] is None
+
+
+def test_coverage_of_depth_is_of_targets_on_the_right_surface():
+    truth = np.full((12, 16), 2.0)
+    pulse = recon.GaussianPulse(3e-10)
+    tags = recon.simulate.time_tags(truth, np.ones((12, 16)), 100, 1e-7, pulse, 0.03, 0.002, seed=3)
+    depth = recon.reconstruct(tags).depth
+    wrong, absent = np.zeros((12, 16), np.float32), np.ones((12, 16), np.float32)
+    wrong[0], absent[1] = 0.9, 0.1
+    depth = replace(depth, wrong_surface=wrong, target=absent, uncertainty=np.full((12, 16), 9.0, np.float32))
+    off = truth.copy()
+    off[:2] = 99.0
+    assert image_record(depth, off)["coverage"] == {"68": 1.0, "95": 1.0, "pixels": 160}
+
+
+def test_records_say_what_was_calibrated(image):
+    assert image_record(image)["calibrated"] is True
+    assert image_record(replace(image, held_out=()))["calibrated"] is False
+
+
+@pytest.mark.parametrize(
+    ("objective", "dual", "relative", "convex", "said"),
+    [
+        (
+            1000.0,
+            999.601,
+            3.99e-4,
+            True,
+            "no image within the bounds has an objective more than 0.04 % below",
+        ),
+        (1000.0, 999.599, 4.01e-4, True, "more than 0.041 % below"),
+        (1000.0, 1000.0, 0.0, True, "no image within the bounds has an objective below this one's"),
+        (1e-9, 5e-10, 1e-3, True, "more than 5e-10 below"),
+        (1000.0, -500.0, 1.5, True, "no use yet"),
+        (np.inf, 1.0, np.inf, True, "no use yet"),
+        (
+            1000.0,
+            990.0,
+            1e-2,
+            False,
+            "in the convex majorant at this image, no image within the bounds has an",
+        ),
+    ],
+)
+def test_the_certificate_never_says_less_than_the_gap(objective, dual, relative, convex, said):
+    record = {
+        "objective": objective, "dual_value": dual, "relative_gap": relative, "convex": convex,
+        "iterations": 40, "trace": {"iteration": [20, 40]},
+    }  # fmt: skip
+    text = words.certificate_in_words(record)
+    assert said in text
+    if "no use" not in said:
+        assert "(measured 2 times in 40 iterations)" in text
+        assert ("not convex" in text) is not convex
+
+
+def test_the_certificate_is_in_the_record(image):
+    record = image_record(image)
+    assert record["convex"] is image.problem.likelihood.convex
+    assert record["certificate"] == words.certificate_in_words(record)
+
+
 @pytest.mark.parametrize(
     ("prior", "name"),
     [
