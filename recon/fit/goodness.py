@@ -144,7 +144,7 @@ def _number_fit(
     if enough:
         if weighed and image.choice.at_edge:
             findings.append(words.at_the_edge(image))
-        if image.choice is None:
+        if image.choice is None or (not weighed and image.choice.factors.size):  # not by held-out data
             test = weight_test(image, acquisition, LARGE, SMALL)
             weighed = test is not None
             if test is not None:
@@ -186,7 +186,10 @@ def _depth_fit(
     statistics: list[Statistic] = []
     likelihood = image.problem.likelihood
     enough = likelihood.y.size >= LEAST_SHARED
+    weighed = image.choice is not None and image.choice.folds > 0
     if enough:
+        if weighed and image.choice.at_edge:
+            findings.append(words.at_the_edge(image))
         away = background_statistic(image, BACKGROUND)
         width = width_statistic(image, seed, WIDTH, told)
         statistics = [one for one in (away, width) if one is not None]
@@ -199,5 +202,5 @@ def _depth_fit(
     nothing = np.full(image.image.shape, np.nan)
     return ImageFit(
         name, nothing, None, np.zeros(nothing.shape, bool), tuple(statistics), tuple(findings),
-        tuple(words.unidentified(acquisition, name, False)), enough and bool(statistics),
+        tuple(words.unidentified(acquisition, name, weighed)), enough and bool(statistics),
     )  # fmt: skip

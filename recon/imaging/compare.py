@@ -107,7 +107,7 @@ def compare(
     candidates = []
     for index, (prior, image) in enumerate(zip(priors, images, strict=True)):
         difference, error = _paired(scores[index] - scores[best])
-        freedom = degrees_of_freedom(image.problem, image.image)
+        freedom = degrees_of_freedom(image.problem, image.image, 0.05 * image.tolerance)
         as_good = difference <= limit * error
         candidates.append(Candidate(prior, image, difference, error, as_good, freedom, seconds[index]))
     verdict = _verdict(candidates, best)

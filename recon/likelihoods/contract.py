@@ -72,7 +72,7 @@ class Likelihood(ABC):
     def estimate(self) -> np.ndarray:
         """Return the image that fits each pixel best by itself (float32); the mean where there is no data."""
 
-    def start(self) -> np.ndarray:
+    def starting_image(self) -> np.ndarray:
         """Return the image that a solve starts from: `estimate`, or its mean where that can mislead.
 
         Where the likelihood is not convex a pixel can stay where its own data put it, however unlikely its

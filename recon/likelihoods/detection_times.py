@@ -156,7 +156,7 @@ class DetectionTimes(Likelihood):
             image[~self._used] = image[self._used].mean() if self._used.any() else 0.5 * self.pulse.period
         return image
 
-    def start(self) -> np.ndarray:
+    def starting_image(self) -> np.ndarray:
         """Return `estimate`: from a flat image most surfaces are out of sight."""
         return self.estimate()
 

@@ -42,9 +42,9 @@ class PixelPart(Likelihood):
         image, seen = self.whole.estimate(), self.has_data
         return np.where(seen, image, image[seen].mean() if seen.any() else image.mean()).astype(np.float32)
 
-    def start(self) -> np.ndarray:
-        """See `Likelihood.start`."""
-        return self.whole.start()
+    def starting_image(self) -> np.ndarray:
+        """See `Likelihood.starting_image`."""
+        return self.whole.starting_image()
 
     def _masked(self, values: np.ndarray) -> np.ndarray:
         return np.where(self.shown, values, 0.0)

@@ -38,4 +38,6 @@ class Tilted(PixelPart):
 
     def majorise(self, x: np.ndarray) -> Likelihood:
         """See `Likelihood.majorise`."""
-        return Tilted(self.whole.majorise(x), self.slope, self.centre)
+        tilted = Tilted(self.whole.majorise(x), self.slope, self.centre)
+        tilted.slope = self.slope  # where the majorant is flat, too
+        return tilted

@@ -40,7 +40,7 @@ def solve(
         where the likelihood is not convex), or a generator function of your own (`recon.solvers.contract`).
     tolerance: relative gap at which to stop, in (0, 1): (objective - dual value) / objective.
     max_iterations: the limit, at which the last iterate is kept.
-    start: image to start from (rows, columns); that of the likelihood (`Likelihood.start`) if left out.
+    start: image to start from (rows, columns); `Likelihood.starting_image` if left out.
     callback: called with every state that is measured; the solve stops if it returns True.
 
     Returns a Solution. A numerical failure never raises: the status says what happened and what to
@@ -97,7 +97,7 @@ def _limits(tolerance: float, max_iterations: int) -> tuple[float, int]:
 
 def _start(start: np.ndarray | None, problem: Problem) -> np.ndarray:
     if start is None:
-        return problem.likelihood.start()
+        return problem.likelihood.starting_image()
     image = np.asarray(start)
     if image.shape != tuple(problem.shape) or image.dtype.kind not in "iuf":
         raise InputError(

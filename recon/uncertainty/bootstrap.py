@@ -13,6 +13,7 @@ from recon.problem import Problem
 from recon.solvers import solve
 
 TOLERANCE = 1e-3  # of the fits: noise is far larger
+LONGEST = 4000  # iterations of a fit
 
 
 @dataclass(frozen=True, eq=False)
@@ -88,6 +89,7 @@ def bootstrap(
             Problem(drawn, problem.priors, problem.bounds),
             solver="conic" if conic else None,
             tolerance=TOLERANCE,
+            max_iterations=LONGEST,
             start=image,
         )
         images[index] = solution.image

@@ -24,7 +24,7 @@ from numpy.typing import NDArray
 from scipy.ndimage import gaussian_filter, uniform_filter
 
 from recon.likelihoods.contract import Likelihood
-from recon.weights import HeldOutFit
+from recon.weights import HeldOutFit, lifted
 
 # Measured on 8 scenes at 1, 4 and 16 counts, 128 x 128; see DEVELOPERS.md.
 OWN = 0.012  # share of the pixel's own variance in F
@@ -68,15 +68,10 @@ def _parts(likelihood: Likelihood, image: NDArray, fits: Sequence[HeldOutFit]) -
     mean = gaussian_filter(image, NEAR)
     among = np.maximum(gaussian_filter(image * image, NEAR) - mean * mean, 0.0)
     with np.errstate(divide="ignore", invalid="ignore"):
-        own = 1.0 / likelihood.fisher_information(lifted(mean))
+        own = 1.0 / likelihood.fisher_information(lifted(mean, likelihood, LEAST))
     known = np.isfinite(own) & likelihood.has_data
     own = np.where(known, own, np.median(own[known]) if known.any() else 0.0)
     return np.array([jackknife, among, OWN * own])
-
-
-def lifted(image: NDArray) -> NDArray:
-    """Return the image, no pixel less than a small share of the mean: a law at zero has no width."""
-    return np.maximum(image, LEAST * max(float(image.mean()), 0.0))
 
 
 @dataclass(frozen=True)
@@ -112,7 +107,7 @@ def _kinds(parts: NDArray, edgy: NDArray, fits: Sequence[HeldOutFit]) -> Iterato
 
 def _products(fit: HeldOutFit) -> list[tuple[NDArray, NDArray]]:
     """Return r times the mean r of neighbours, 3 x 3 and 5 x 5, and where there are both."""
-    x = lifted(np.asarray(fit.image, np.float64))
+    x = lifted(np.asarray(fit.image, np.float64), fit.score, LEAST)
     with np.errstate(divide="ignore", invalid="ignore"):
         off = fit.score.gradient(x) / fit.score.fisher_information(x)
     known = fit.score.has_data & np.isfinite(off)

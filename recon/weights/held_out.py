@@ -31,7 +31,7 @@ class Fold:
     """A likelihood to fit and one to score, of the same image.
 
     terms: the priors of the fit at factor 1, those to be chosen at their rule of thumb. open: which are.
-    bounds: of the fit. start: image to start from, or None. tolerance: of the fit.
+    bounds: of the fit. start: image to start from, or None. tolerance, limit: of the fit, gap and iterations.
     """
 
     fit: Likelihood
@@ -41,6 +41,7 @@ class Fold:
     bounds: tuple[float, float]
     start: np.ndarray | None = None
     tolerance: float = TOLERANCE
+    limit: int = LIMIT
 
 
 @dataclass(frozen=True, eq=False)
@@ -97,7 +98,7 @@ class _Path:
                     _pilot(fold.score, image) for fold, image in zip(self.folds, images, strict=True)
                 ]
             self.scores[key] = [
-                pilot * fold.score.score_map(lifted(image))
+                pilot * fold.score.score_map(lifted(image, fold.score))
                 for fold, image, pilot in zip(self.folds, images, self.pilots, strict=True)
             ]
         return sum(float(np.sum(part)) for part in self.scores[key])
@@ -109,7 +110,7 @@ class _Path:
         if self.images:
             near = min(self.images, key=lambda other: abs(math.log(other / factor)))
             start = self.images[near][index]
-        return fitted(Problem(fold.fit, terms, fold.bounds), start, fold.tolerance)
+        return fitted(Problem(fold.fit, terms, fold.bounds), start, fold.tolerance, fold.limit)
 
     def difference(self, one: float, other: float) -> tuple[float, float]:
         """Return the score at one factor less that at another, and its standard error."""
@@ -118,13 +119,22 @@ class _Path:
         return sum(float(d.sum()) for d in apart), math.sqrt(square)
 
 
-def fitted(problem: Problem, start: np.ndarray | None, tolerance: float = TOLERANCE) -> np.ndarray:
+def fitted(
+    problem: Problem, start: np.ndarray | None, tolerance: float = TOLERANCE, limit: int = LIMIT
+) -> np.ndarray:
     """Return the image of a fit to a part of the data."""
-    return solve(problem, tolerance=tolerance, max_iterations=LIMIT, start=start).image
+    return solve(problem, tolerance=tolerance, max_iterations=limit, start=start).image
 
 
-def lifted(image: np.ndarray) -> np.ndarray:
-    return np.maximum(image, FLOOR * max(float(image.mean()), 0.0))
+def lifted(image: np.ndarray, likelihood: Likelihood, share: float = FLOOR) -> np.ndarray:
+    """Return the image, where it can end at zero no pixel less than a share of the mean.
+
+    At zero a law has no width, and a single detection would decide.
+    """
+    low = likelihood.domain.low
+    if not math.isfinite(low):
+        return image
+    return np.maximum(image, low + share * max(float(image.mean(dtype=np.float64)) - low, 0.0))
 
 
 def _pilot(score: Likelihood, image: np.ndarray) -> np.ndarray | float:
@@ -135,7 +145,7 @@ def _pilot(score: Likelihood, image: np.ndarray) -> np.ndarray | float:
     """
     if score.scores_add_up:
         return 1.0
-    information = score.fisher_information(lifted(image))
+    information = score.fisher_information(lifted(image, score))
     seen = score.has_data & np.isfinite(information) & (information > 0.0)
     weight = np.zeros(image.shape)
     weight[seen] = 1.0 / information[seen]
@@ -149,7 +159,10 @@ def held_out_scores(fits: Sequence[Sequence[HeldOutFit]]) -> list[np.ndarray]:
     """
     pilots = [_pilot(fit.score, fit.image) for fit in fits[0]]
     return [
-        sum(pilot * fit.score.score_map(lifted(fit.image)) for pilot, fit in zip(pilots, each, strict=True))
+        sum(
+            pilot * fit.score.score_map(lifted(fit.image, fit.score))
+            for pilot, fit in zip(pilots, each, strict=True)
+        )
         for each in fits
     ]
 

@@ -133,7 +133,7 @@ WHOLE_DATA: dict[str, Callable[..., Choice]] = {"discrepancy": discrepancy, "ris
 
 def _residual(likelihood: Likelihood, image: np.ndarray) -> np.ndarray:
     """Return (dL/dx) / I, which is x - v where the score is linear; 0 without data."""
-    x = lifted(image)
+    x = lifted(image, likelihood)
     with np.errstate(divide="ignore", invalid="ignore"):
         off = likelihood.gradient(x) / likelihood.fisher_information(x)
     return np.where(likelihood.has_data & np.isfinite(off), off, 0.0)
@@ -147,5 +147,5 @@ def _variance(likelihood: Likelihood, estimate: np.ndarray) -> np.ndarray:
 
 
 def _information(likelihood: Likelihood, image: np.ndarray) -> np.ndarray:
-    information = likelihood.fisher_information(lifted(image))
+    information = likelihood.fisher_information(lifted(image, likelihood))
     return np.where(likelihood.has_data & np.isfinite(information), information, 0.0)

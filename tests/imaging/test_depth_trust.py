@@ -231,7 +231,6 @@ def test_when_tags_can_be_shared_out() -> None:
         assert not DetectionTimes(masked, 1.0).can_be_shared_out
 
 
-@pytest.mark.xfail(strict=True, reason="DetectionTimes.start, where tags begin, hides the method")
 def test_a_solve_of_depth_starts_where_each_pixel_fits_best() -> None:
     likelihood = likelihood_of("nothing lost")
     problem = recon.Problem(likelihood, priors.TotalVariation(10.0))

@@ -76,7 +76,7 @@ def test_quadratic_smoothing_of_readings_with_maps() -> None:
     "kind",
     [
         "gaussian",
-        pytest.param("poisson", marks=pytest.mark.xfail(strict=True, reason="counts a tenth too few")),
+        "poisson",
     ],
 )
 def test_nothing_smoothed_and_all_smoothed(kind: str) -> None:
