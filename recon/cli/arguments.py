@@ -158,9 +158,11 @@ def _reconstruct(commands: argparse._SubParsersAction, common: argparse.Argument
     command.add_argument(
         "--weight",
         metavar="W",
-        type=_real,
-        help="weight of that prior, above 0; larger is smoother (default: the one that predicts held-out data"
-        " best)",
+        type=_weight,
+        default="auto",
+        help="weight of that prior, above 0; larger is smoother; or how to choose it: auto (what predicts"
+        " held-out data best, the default), rule (of thumb), discrepancy (residuals as large as noise)"
+        " or risk (least unbiased estimate of the squared error)",
     )
     command.add_argument(
         "--unknown-current",
@@ -349,6 +351,14 @@ def _real(text: str) -> float:
         return float(text)
     except ValueError:
         raise argparse.ArgumentTypeError(f"{text!r} is not a number") from None
+
+
+def _weight(text: str) -> float | str:
+    """Return a number, or a name as it is; `recon.reconstruct` knows which there are."""
+    try:
+        return float(text)
+    except ValueError:
+        return text
 
 
 def _whole(text: str) -> int:

@@ -37,6 +37,7 @@ class Settings:
     unknown_current: bool = False
     moving: bool = False
     fit: bool = False  # whether to ask afterwards if the model fits
+    weight: str = "auto"  # how to set it where the prior leaves it open
 
 
 @dataclass(frozen=True, eq=False)
@@ -78,6 +79,7 @@ class Job:
                 callback=progress,
                 unknown_current=self.settings.unknown_current,
                 moving=self.settings.moving,
+                weight=self.settings.weight,
             )
             fits: Mapping[str, ImageFit] = {}
             if self.settings.fit:
