@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass
 
-from scipy.stats import norm
+from scipy.special import ndtr
 
 from recon.acquisition import Frames
 from recon.fit.statistic import Statistic
@@ -13,9 +13,9 @@ from recon.imaging.electron_yield import frame_folds
 from recon.imaging.image import PhysicalImage
 from recon.likelihoods.contract import Likelihood
 from recon.likelihoods.poisson_marks import PoissonMarks
-from recon.weights.held_out import Fold, _Path
+from recon.weights.held_out import Fold, WeightPath
 from recon.weights.settle import FOLDS, SEED
-from recon.weights.thumb import typical_information
+from recon.weights.thumb import for_part, typical_information
 
 APART = 4.0
 
@@ -51,7 +51,7 @@ def weight_test(image: PhysicalImage, acquisition: object, large: float, small: 
         return None
     else:
         pairs = likelihood.folds(FOLDS, SEED)
-    path = _Path([_fold(image, fit, score) for fit, score in pairs], None)
+    path = WeightPath([_fold(image, fit, score) for fit, score in pairs], None)
     path.at(1.0)
     lighter = _compared(path, 1.0 / APART, "held-out score of a quarter of the weight", large)
     if lighter.denies:
@@ -62,19 +62,16 @@ def weight_test(image: PhysicalImage, acquisition: object, large: float, small: 
 
 def _fold(image: PhysicalImage, fit: Likelihood, score: Likelihood) -> Fold:
     whole, part = typical_information(image.problem.likelihood), typical_information(fit)
-    terms = tuple(
-        term.with_weight(term.weight * term.typical_weight(part) / term.typical_weight(whole))
-        for term in image.priors
-    )
+    terms = tuple(for_part(term, part, whole) for term in image.priors)
     low, high = image.bounds
     bounds = low, max(high, fit.default_bounds[1])
     return Fold(fit, score, terms, (True,) * len(terms), bounds, image.image)
 
 
-def _compared(path: _Path, factor: float, name: str, threshold: float) -> Statistic:
+def _compared(path: WeightPath, factor: float, name: str, threshold: float) -> Statistic:
     base = path.at(1.0)
     path.at(factor)
     apart, error = path.difference(factor, 1.0)
     z = apart / error if error > 0.0 else 0.0
     scale = abs(base) if base and math.isfinite(base) else 1.0
-    return Statistic(name, apart / scale, 0.0, error / scale, float(norm.cdf(z)), threshold)
+    return Statistic(name, apart / scale, 0.0, error / scale, float(ndtr(z)), threshold)

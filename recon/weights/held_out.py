@@ -75,7 +75,7 @@ class Choice:
 
 
 @dataclass
-class _Path:
+class WeightPath:
     """Fits along the path, each started from the nearest one before."""
 
     folds: Sequence[Fold]
@@ -191,7 +191,7 @@ def choose(
     callback: called with every factor that is tried. second_order: whether to choose that, too, where a
         prior has one.
     """
-    path = _Path(folds, callback)
+    path = WeightPath(folds, callback)
     at = 0
     for direction in (1, -1):
         while len(path.images) < MOST and path.at(RATIO ** (at + direction)) < path.at(RATIO**at):
@@ -218,7 +218,7 @@ def vertex(factors: np.ndarray, score: np.ndarray, k: int) -> float:
     return float(factors[k] * RATIO ** np.clip(shift, -0.5, 0.5))
 
 
-def _second_order(path: _Path, fold: Fold, factor: float) -> float | None:
+def _second_order(path: WeightPath, fold: Fold, factor: float) -> float | None:
     """Return the second-order weight with the best score of half, once and twice the given one."""
     open_terms = [term for term, open_ in zip(fold.terms, fold.open, strict=True) if open_]
     given = [term.second_order for term in open_terms if hasattr(term, "second_order")]
