@@ -5,8 +5,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
-from scipy.special import betaln, xlog1py, xlogy
-from scipy.stats import binom
+from scipy.special import bdtr, bdtrc, betaln, xlog1py, xlogy
 
 from recon.acquisition.counts import Counts
 from recon.errors import InputError
@@ -183,7 +182,7 @@ class BernoulliTrials(Likelihood):
             expected = np.where(self._has_data, float(self._stop_after), 0.0)
         else:
             wanted, limit = self._stop_after, self._most_trials
-            trials = limit * binom.cdf(wanted - 1, limit, p) + wanted / p * binom.sf(wanted, limit + 1, p)
+            trials = limit * bdtr(wanted - 1, limit, p) + wanted / p * bdtrc(wanted, limit + 1, p)
             expected = np.where(self._has_data, trials * p, 0.0)
         return self._weighted(expected, self._curvature_of_one(x))
 
@@ -207,7 +206,9 @@ class BernoulliTrials(Likelihood):
             if self._most_trials is not None:
                 late = n > self._most_trials
                 # Given that the wanted number was not reached, the detections are binomial below it.
-                u = rng.random(self.shape) * binom.cdf(wanted - 1, self._most_trials, p)
+                from scipy.stats import binom  # it takes long to import
+
+                u = rng.random(self.shape) * bdtr(wanted - 1, self._most_trials, p)
                 k[late] = binom.ppf(u[late], self._most_trials, p[late])
                 n[late] = self._most_trials
             other._k, other._n = np.where(self._has_data, k, 0.0), np.where(self._has_data, n, 0.0)
