@@ -74,7 +74,7 @@ def test_a_file_that_is_not_there(run, tmp_path):
         (("--weight", "0"), "weight is 0.0"),
         (("--weight", "nan"), "weight is nan"),
         (("--weight", "inf"), "weight is inf"),
-        (("--weight", "much"), "'much' is not a number"),
+        (("--weight", "much"), "weight is 'much'; give one of auto, rule, discrepancy, risk"),
         (("--weight",), "expected one argument"),
         (("--tolerance", "2"), "tolerance is 2.0"),
         (("--tolerance", "0"), "tolerance is 0.0"),
