@@ -124,15 +124,15 @@ def test_what_is_said_of_pixels():
     assert result.target.mean() > 0.95
 
 
-@pytest.mark.parametrize("seed", SEEDS)
-def test_uncertainty_covers_two_thirds_of_the_errors(seed):
-    """At least, on the surface that a pixel is on: neighbours are trusted less than a plane deserves."""
-    scene = slopes()[:32, :48]
-    tags = acquire(scene, seed, signal=2.0, background=2.0)
-    result = depth(tags, np.ones(scene.shape), effort=QUICK)
-    error = np.abs(result.start - scene)
-    inside = np.mean((error < result.uncertainty)[error < 3.0 * CORE])
-    assert 0.6 < inside < 0.97
+def test_uncertainty_covers_two_thirds_of_the_errors():
+    """On the surface that a pixel is on; in the mean over draws of a scene that is small."""
+    scene, inside = slopes()[:32, :48], []
+    for seed in SEEDS:
+        tags = acquire(scene, seed, signal=2.0, background=2.0)
+        result = depth(tags, np.ones(scene.shape), effort=Effort(max_iterations=1000))
+        error = np.abs(result.image - scene)
+        inside.append(np.mean((error < result.uncertainty)[error < 3.0 * CORE]))
+    assert 0.55 < np.mean(inside) < 0.85
 
 
 def test_a_tolerance_is_recorded_and_kept():
@@ -156,7 +156,8 @@ def test_a_callback_can_stop():
 @pytest.mark.parametrize("seed", SEEDS)
 def test_generalized_variation_converges(seed):
     scene = slopes()[::4, ::4]
-    result = depth(acquire(scene, seed, signal=1.0, background=1.0), np.ones(scene.shape))
+    tags = acquire(scene, seed, signal=1.0, background=1.0)
+    result = depth(tags, np.ones(scene.shape), effort=Effort(weight="rule"))
     assert result.status is Status.CONVERGED
     assert result.diagnostics.relative_gap <= 1e-2
 
