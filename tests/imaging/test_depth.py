@@ -22,7 +22,7 @@ RMS = 0.27e-9
 PULSE = GaussianPulse(RMS)
 METRES = 0.5 * constants.c
 CORE = METRES * RMS
-QUICK = Effort(max_iterations=300)
+QUICK = Effort(max_iterations=300, weight="rule", judge=False)
 
 
 def acquire(scene, seed, signal=0.5, background=0.5, reflectivity=1.0, **more):
@@ -70,7 +70,12 @@ def test_depth_lowers_the_objective_and_the_error(name):
             assert image == "depth"
             kept.append(state.objective)
 
-        result = depth(tags, np.ones(scene.shape), prior, Effort(max_iterations=700, callback=told))
+        result = depth(
+            tags,
+            np.ones(scene.shape),
+            prior,
+            Effort(max_iterations=700, callback=told, weight="rule", judge=False),
+        )
         assert len(objective) > 1
         assert np.all(np.diff(objective) <= 1e-6 * np.abs(objective[:-1]))
         problem = Problem(DetectionTimes(tags, 1.0), result.priors, result.bounds)
