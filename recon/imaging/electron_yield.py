@@ -13,7 +13,6 @@ from recon.imaging.task import Effort, image_of, judged
 from recon.imaging.yield_estimators import conventional_yield, one_frame_note, total_dose
 from recon.likelihoods.contract import Likelihood
 from recon.likelihoods.gaussian import Gaussian
-from recon.likelihoods.poisson import Poisson
 from recon.problem import Prior, Problem, Sum, default_prior
 from recon.weights import held_out_fits, settle
 
@@ -125,14 +124,23 @@ def some(frames: Frames, chosen: np.ndarray) -> Frames:
 
 
 def _ratio(frames: Frames) -> Likelihood:
-    """Return a law of the conventional ratio, whose score is the squared distance from it."""
+    """Return the conventional ratio v as a reading whose score is the squared distance from it.
+
+    Its variance is (spread eta + eta^2) / D + readout, D primaries being expected; spread is 1 and readout 0
+    where electrons are counted. It is declared as (spread v + v^2 + D readout) / (D + 1), which is that on
+    average, and no less than a thousandth of its mean.
+    """
+    ratio, dose = conventional_yield(frames).image.astype(np.float64), total_dose(frames)
+    known = np.isfinite(ratio)
+    ratio = np.where(known, ratio, 0.0)
+    spread, readout = 1.0, 0.0
     if frames.law is not None:
-        ratio = conventional_yield(frames).image
-        known = np.isfinite(ratio)
-        return Gaussian.from_arrays(np.where(known, ratio, 0.0), known.astype(np.float32))
-    usable = np.ones(frames.shape, bool) if frames.mask is None else frames.mask
-    electrons = np.where(usable, frames.counts.sum(axis=0, dtype=np.int64), 0)
-    return Poisson.from_arrays(electrons, np.where(usable, total_dose(frames), 0.0), 0.0, usable)
+        spread += frames.law.variance / frames.law.gain**2
+        readout = frames.frames * (frames.law.noise / frames.law.gain / dose) ** 2
+    variance = (spread * ratio + ratio * ratio + dose * readout) / (dose + 1.0)
+    least = 1e-3 * float(variance[known].mean()) if known.any() else 0.0
+    variance = np.maximum(variance, least if least > 0.0 else 1.0)
+    return Gaussian.from_arrays(ratio, np.where(known, 1.0 / variance, 0.0).astype(np.float32))
 
 
 def _changes(frames: Frames) -> bool:

@@ -80,12 +80,14 @@ class _Kind:
 
     parts: the mean of J, A and F. correlated: what the correlation of neighbours' errors usually is.
     shared, error: the mean of r_i r_j over neighbours j in a 3 x 3 and in a 5 x 5 window, and their errors.
+    own: the mean of r_i^2 less its variance, and its error; None where the variance is not known.
     """
 
     parts: NDArray
     correlated: float
     shared: tuple[float, float]
     error: tuple[float, float]
+    own: tuple[float, float] | None
 
 
 def _kinds(parts: NDArray, edgy: NDArray, fits: Sequence[HeldOutFit]) -> Iterator[_Kind]:
@@ -102,11 +104,18 @@ def _kinds(parts: NDArray, edgy: NDArray, fits: Sequence[HeldOutFit]) -> Iterato
         correlated = float(np.clip(0.38 - 0.083 * np.log(mine.sum() / level), 0.2, 0.95))
         # a pair is counted twice
         errors = tuple(float(np.sqrt(2.0 * np.mean(p * p) / p.size)) for p in (near, wide))
-        yield _Kind(mine, correlated, (float(near.mean()), float(wide.mean())), errors)
+        own = None
+        if all(fit.score.has_linear_score for fit in fits):
+            squares = np.concatenate([p[2][0][chosen & p[2][1]] for p in products])
+            own = float(squares.mean()), float(squares.std() / np.sqrt(squares.size))
+        yield _Kind(mine, correlated, (float(near.mean()), float(wide.mean())), errors, own)
 
 
 def _products(fit: HeldOutFit) -> list[tuple[NDArray, NDArray]]:
-    """Return r times the mean r of neighbours, 3 x 3 and 5 x 5, and where there are both."""
+    """Return r times the mean r of neighbours, 3 x 3 and 5 x 5, r^2 less its variance, and where they are.
+
+    The variance is that of the law at the unbiased estimate x - r, which it equals on average.
+    """
     x = lifted(np.asarray(fit.image, np.float64), fit.score, LEAST)
     with np.errstate(divide="ignore", invalid="ignore"):
         off = fit.score.gradient(x) / fit.score.fisher_information(x)
@@ -117,6 +126,9 @@ def _products(fit: HeldOutFit) -> list[tuple[NDArray, NDArray]]:
         number = side**2 * uniform_filter(known.astype(np.float64), side, mode="constant") - known
         beside = side**2 * uniform_filter(off, side, mode="constant") - off
         out.append((off * beside / np.maximum(number, 1.0), known & (number > 0.5)))
+    with np.errstate(divide="ignore", invalid="ignore"):
+        variance = 1.0 / fit.score.fisher_information(x - off)
+    out.append((off * off - np.where(known, variance, 0.0), known & np.isfinite(variance)))
     return out
 
 
@@ -134,6 +146,9 @@ def _factors(kinds: Sequence[_Kind], number: int) -> NDArray:
             expected = larger * correlated * float(factors @ kind.parts)
             further = expected * correlated**FALL
             out.append((kind.shared[0] - expected) / kind.error[0])
+            if kind.own is not None:
+                alone = expected / correlated
+                out.append((kind.own[0] - alone) / np.hypot(kind.own[1], ROUGH * alone))
             out.append((kind.shared[1] - further) / np.hypot(kind.error[1], ROUGH * further))
         return np.array(out)
 
