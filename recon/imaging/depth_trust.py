@@ -11,6 +11,7 @@ from recon.likelihoods.detection_times import DetectionTimes
 from recon.problem import Prior, Problem
 from recon.solvers import solve
 from recon.weights import Choice, Fold, HeldOutFit, at_factor, choose, for_part
+from recon.weights.held_out import fitted
 
 FOLDS = 2  # halves of the tags: fewer fits than thirds, and no worse (measured)
 SEED = 20_240_518
@@ -31,8 +32,9 @@ def chosen_terms(
 ) -> tuple[list[Prior], Choice, tuple[HeldOutFit, ...]]:
     """Return the priors with the open weights that predict held-out tags best, the choice, and its fits.
 
-    The tags are shared out, half and half (`DetectionTimes.folds`). Edge weights and start are those of all
-    tags, which favours no weight within a surface. The second weight of a prior keeps its default.
+    The tags are shared out, half and half (`DetectionTimes.folds`): fits to one half are scored by the other.
+    The other half is fitted at the weight chosen, for the uncertainty. Edge weights and start are those of
+    all tags, which favours no weight within a surface. The second weight of a prior keeps its default.
     """
     pairs = likelihood.folds(FOLDS, SEED)
     folds = [
@@ -48,7 +50,10 @@ def chosen_terms(
         )
         for fit, score in pairs
     ]
-    choice, images = choose(folds, second_order=False)
+    choice, images = choose(folds[:1], second_order=False)
+    other = folds[1]
+    terms_of_other = at_factor(other.terms, is_open, float(choice.factors[np.argmin(choice.score)]))
+    images.append(fitted(Problem(other.fit, terms_of_other, bounds), start, tolerance, LIMIT))
     fits = tuple(HeldOutFit(image, score) for image, (_, score) in zip(images, pairs, strict=True))
     return at_factor(terms, is_open, choice.factor), choice, fits
 
