@@ -127,13 +127,15 @@ def depth(
         start=start,
         callback=None if told is None else lambda state: told("depth", state),
     )
-    belief_uncertainty = 0.5 * (belief.quantile(0.84) - belief.quantile(0.16))
     signal = likelihood.signal_tags(solution.image).astype(np.float32)
     reach = SURFACE * likelihood.pulse.core
     wrong = 1.0 - belief.probability_within(solution.image - reach, solution.image + reach)
     if effort.judge and enough and not halves:
         halves = fits_to_halves(terms, likelihood, solution.image, bounds, tolerance)
-    uncertainty = depth_uncertainty(halves, likelihood.pulse.core) if halves else belief_uncertainty
+    if halves:
+        uncertainty = depth_uncertainty(halves, likelihood.pulse.core)
+    else:
+        uncertainty = 0.5 * (belief.quantile(0.84) - belief.quantile(0.16))
     check = background_check(likelihood, tags.background, solution.image, wrong)
     return DepthImage(
         image=solution.image,

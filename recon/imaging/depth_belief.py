@@ -27,9 +27,7 @@ DAMPING = 0.85  # what a message that has travelled counts for
 LEAVE, COME = 0.01, 0.01  # share of neighbours without target beside one with, and the reverse
 LEAST = 3e-5  # of the likeliest bin's probability; less likely bins are not cut further
 MOST = 24  # bins of a pixel that are cut further
-WORTH = (
-    0.2  # signal detections: what a target is taken to cause at least when it is asked whether there is one
-)
+WORTH = 0.2  # signal detections: the least a target is taken to cause when it is asked whether there is one
 NEVER = 1e-30  # likelihood of no target while depth is asked
 PHASES = 8  # places of a tag within its bin
 FAINT = 0.01  # of the noise; fainter parts of the pulse are left out

@@ -9,7 +9,6 @@ from scipy.ndimage import gaussian_filter
 
 from recon.likelihoods.detection_times import DetectionTimes
 from recon.problem import Prior, Problem
-from recon.solvers import solve
 from recon.weights import Choice, Fold, HeldOutFit, at_factor, choose, for_part
 from recon.weights.held_out import fitted
 
@@ -36,25 +35,13 @@ def chosen_terms(
     The other half is fitted at the weight chosen, for the uncertainty. Edge weights and start are those of
     all tags, which favours no weight within a surface. The second weight of a prior keeps its default.
     """
-    pairs = likelihood.folds(FOLDS, SEED)
-    folds = [
-        Fold(
-            fit,
-            score,
-            tuple(_scaled(terms, fit, likelihood, start)),
-            tuple(is_open),
-            bounds,
-            start,
-            tolerance,
-            LIMIT,
-        )
-        for fit, score in pairs
-    ]
-    choice, images = choose(folds[:1], second_order=False)
-    other = folds[1]
-    terms_of_other = at_factor(other.terms, is_open, float(choice.factors[np.argmin(choice.score)]))
-    images.append(fitted(Problem(other.fit, terms_of_other, bounds), start, tolerance, LIMIT))
-    fits = tuple(HeldOutFit(image, score) for image, (_, score) in zip(images, pairs, strict=True))
+    (fit, score), (other, other_score) = likelihood.folds(FOLDS, SEED)
+    scaled = _scaled(terms, fit, likelihood, start)
+    fold = Fold(fit, score, scaled, tuple(is_open), bounds, start, tolerance, LIMIT)
+    choice, images = choose([fold], second_order=False)
+    best = float(choice.factors[np.argmin(choice.score)])
+    problem = Problem(other, at_factor(_scaled(terms, other, likelihood, start), is_open, best), bounds)
+    fits = (HeldOutFit(images[0], score), HeldOutFit(fitted(problem, start, tolerance, LIMIT), other_score))
     return at_factor(terms, is_open, choice.factor), choice, fits
 
 
@@ -69,8 +56,7 @@ def fits_to_halves(
     fits = []
     for fit, score in likelihood.folds(FOLDS, SEED):
         problem = Problem(fit, _scaled(terms, fit, likelihood, image), bounds)
-        solution = solve(problem, tolerance=tolerance, max_iterations=LIMIT, start=image)
-        fits.append(HeldOutFit(solution.image, score))
+        fits.append(HeldOutFit(fitted(problem, image, tolerance, LIMIT), score))
     return tuple(fits)
 
 

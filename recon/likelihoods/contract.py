@@ -50,6 +50,9 @@ class Likelihood(ABC):
     convex: bool = True
     """Whether value is convex in the image; if not, `majorise` gives a convex likelihood above it."""
 
+    has_linear_score: bool = False
+    """Whether gradient(x) / fisher_information(x) is x less an unbiased estimate that no x enters."""
+
     shape: tuple[int, int]
     """(rows, columns) of the image."""
 
@@ -142,11 +145,6 @@ class Likelihood(ABC):
     @property
     def scores_add_up(self) -> bool:
         """Whether the `score_map` of unlike pixels may be summed as it is; if not, over their information."""
-        return False
-
-    @property
-    def has_linear_score(self) -> bool:
-        """Whether gradient(x) / fisher_information(x) is x less an unbiased estimate that no x enters."""
         return False
 
     # Convex likelihoods ------------------------------------------------------------------------

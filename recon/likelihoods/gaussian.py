@@ -30,6 +30,8 @@ class Gaussian(Likelihood):
     Raises InputError.
     """
 
+    has_linear_score = True
+
     def __init__(
         self,
         readings: np.ndarray,
@@ -168,11 +170,6 @@ class Gaussian(Likelihood):
                 )
             )
         return pairs
-
-    @property
-    def has_linear_score(self) -> bool:
-        """See `Likelihood.has_linear_score`."""
-        return True
 
     @property
     def scores_add_up(self) -> bool:

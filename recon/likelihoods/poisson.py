@@ -25,6 +25,8 @@ class Poisson(Likelihood):
         contribute zero.
     """
 
+    has_linear_score = True
+
     def __init__(self, counts: Counts) -> None:
         exposure = counts.exposure
         has_data = np.broadcast_to(np.asarray(exposure) > 0.0, counts.shape)
@@ -160,11 +162,6 @@ class Poisson(Likelihood):
     def can_be_shared_out(self) -> bool:
         """See `Likelihood.can_be_shared_out`."""
         return float(self._count.sum(dtype=np.float64)) >= LEAST_SHARED
-
-    @property
-    def has_linear_score(self) -> bool:
-        """See `Likelihood.has_linear_score`."""
-        return True
 
     @property
     def scores_add_up(self) -> bool:
