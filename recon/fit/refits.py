@@ -23,7 +23,7 @@ from recon.imaging.image import PhysicalImage
 from recon.likelihoods.contract import Likelihood
 from recon.problem import Problem
 from recon.solvers import solve
-from recon.weights.held_out import FLOOR
+from recon.weights.scoring import FLOOR
 
 DRAWS = 5  # of each kind
 LONE_DRAWS = 2  # for the number of lone pixels, which is nearly Poisson

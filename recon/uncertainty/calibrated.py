@@ -24,7 +24,8 @@ from numpy.typing import NDArray
 from scipy.ndimage import gaussian_filter, uniform_filter
 
 from recon.likelihoods.contract import Likelihood
-from recon.weights import HeldOutFit, lifted
+from recon.weights import HeldOutFit
+from recon.weights.scoring import lifted, scoring_step
 
 # Measured on 8 scenes at 1, 4 and 16 counts, 128 x 128; see DEVELOPERS.md.
 OWN = 0.012  # share of the pixel's own variance in F
@@ -117,10 +118,7 @@ def _products(fit: HeldOutFit) -> list[tuple[NDArray, NDArray]]:
     The variance is that of the law at the unbiased estimate x - r, which it equals on average.
     """
     x = lifted(np.asarray(fit.image, np.float64), fit.score, LEAST)
-    with np.errstate(divide="ignore", invalid="ignore"):
-        off = fit.score.gradient(x) / fit.score.fisher_information(x)
-    known = fit.score.has_data & np.isfinite(off)
-    off = np.where(known, off, 0.0)
+    off, _, known = scoring_step(fit.score, x, LEAST)
     out = []
     for side in (3, 5):
         number = side**2 * uniform_filter(known.astype(np.float64), side, mode="constant") - known

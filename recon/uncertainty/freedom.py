@@ -6,10 +6,9 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from recon.likelihoods.tilted import Tilted
 from recon.problem import Problem
-from recon.solvers import solve
 from recon.uncertainty.local import local_uncertainty
+from recon.weights.response import response
 
 PROBES = 2
 NUDGE = 0.5  # of the noise: by so much data are moved
@@ -46,16 +45,8 @@ def degrees_of_freedom(problem: Problem, image: np.ndarray, tolerance: float = 2
     for _ in range(PROBES):
         signs = np.where(asked, rng.choice((-1.0, 1.0), size=image.shape), 0.0)
         slope = NUDGE * signs / np.where(asked, u, 1.0)
-        ends = [
-            solve(
-                Problem(Tilted(likelihood, way * slope, image), problem.priors, problem.bounds),
-                tolerance=tolerance,
-                max_iterations=LONGEST,
-                start=image,
-            ).image
-            for way in (1.0, -1.0)
-        ]
-        gives = signs * np.where(asked, u * information, 0.0) * (ends[0].astype(np.float64) - ends[1])
-        found.append(float(gives.sum()) / (2.0 * NUDGE))
+        gives = response(problem, slope, image, tolerance, LONGEST)
+        moved = signs * np.where(asked, u * information, 0.0) * gives
+        found.append(float(moved.sum()) / (2.0 * NUDGE))
     error = float(np.std(found, ddof=1) / np.sqrt(PROBES))
     return Freedom(float(np.mean(found)), error)

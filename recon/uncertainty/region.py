@@ -9,7 +9,7 @@ from scipy.ndimage import gaussian_filter
 
 from recon.errors import InputError
 from recon.likelihoods.contract import Likelihood
-from recon.weights import lifted
+from recon.weights.scoring import lifted
 
 STEPS = 4
 BLUR = 1.5  # pixels

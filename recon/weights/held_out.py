@@ -10,7 +10,7 @@ how the weight grows with the data, so a factor found on a share of the data hol
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Sequence, Sized
 from dataclasses import dataclass, field, replace
 
 import numpy as np
@@ -18,12 +18,12 @@ import numpy as np
 from recon.likelihoods.contract import Likelihood
 from recon.problem import Prior, Problem
 from recon.solvers import solve
+from recon.weights.scoring import lifted
 
 RATIO = 1.6  # of neighbouring factors on the path
 MOST = 12  # factors tried
 TOLERANCE = 1e-3  # of the fits: far closer than folds tell weights apart
 LIMIT = 4000  # iterations of a fit
-FLOOR = 1e-3  # of the mean of an image: what is scored where it is zero, lest one detection decide
 
 
 @dataclass(frozen=True, eq=False)
@@ -126,17 +126,6 @@ def fitted(
     return solve(problem, tolerance=tolerance, max_iterations=limit, start=start).image
 
 
-def lifted(image: np.ndarray, likelihood: Likelihood, share: float = FLOOR) -> np.ndarray:
-    """Return the image, where it can end at zero no pixel less than a share of the mean.
-
-    At zero a law has no width, and a single detection would decide.
-    """
-    low = likelihood.domain.low
-    if not math.isfinite(low):
-        return image
-    return np.maximum(image, low + share * max(float(image.mean(dtype=np.float64)) - low, 0.0))
-
-
 def _pilot(score: Likelihood, image: np.ndarray) -> np.ndarray | float:
     """Return what a pixel's predictive log-likelihood counts for: 1 over its information at a first fit.
 
@@ -192,25 +181,40 @@ def choose(
         prior has one.
     """
     path = WeightPath(folds, callback)
-    at = 0
-    for direction in (1, -1):
-        while len(path.images) < MOST and path.at(RATIO ** (at + direction)) < path.at(RATIO**at):
-            at += direction
-    best = RATIO**at
+    best = downhill(path.at, path.images)
     factors = np.array(sorted(path.images))
     compared = [path.difference(f, best) for f in factors]
     score, error = (np.array(column) for column in zip(*compared, strict=True))
-    at_edge = best in (factors[0], factors[-1])
-    factor = best if at_edge else vertex(factors, score, int(np.searchsorted(factors, best)))
     second = _second_order(path, folds[0], best) if second_order else None
-    note = ""
-    if at_edge:
+    return chosen_at(best, factors, score, error, len(folds), second), path.images[best]
+
+
+def downhill(score: Callable[[float], float], tried: Sized) -> float:
+    """Return the factor with the least score, in steps of `RATIO` from 1; tried: all factors so far."""
+    at = 0
+    for direction in (1, -1):
+        while len(tried) < MOST and score(RATIO ** (at + direction)) < score(RATIO**at):
+            at += direction
+    return RATIO**at
+
+
+def chosen_at(
+    best: float,
+    factors: np.ndarray,
+    score: np.ndarray,
+    error: np.ndarray,
+    folds: int = 0,
+    second_order: float | None = None,
+) -> Choice:
+    """Return the choice of the vertex near the best factor, or of that itself at an end of the path."""
+    if best in (factors[0], factors[-1]):
         note = f"the best weight is at the end of the path, {best:.3g} times the rule of thumb"
-    chosen = Choice(factor, second, factors, score, error, len(folds), at_edge, note)
-    return chosen, path.images[best]
+        return Choice(best, second_order, factors, score, error, folds, True, note)
+    factor = _vertex(factors, score, int(np.searchsorted(factors, best)))
+    return Choice(factor, second_order, factors, score, error, folds, False)
 
 
-def vertex(factors: np.ndarray, score: np.ndarray, k: int) -> float:
+def _vertex(factors: np.ndarray, score: np.ndarray, k: int) -> float:
     """Return the factor at the vertex of the parabola through the best score and its neighbours."""
     a, b, c = score[k - 1 : k + 2]
     bend = a - 2.0 * b + c

@@ -13,9 +13,10 @@ import numpy as np
 
 from recon.errors import InputError
 from recon.likelihoods.contract import Likelihood
-from recon.likelihoods.tilted import Tilted
 from recon.problem import Prior, Problem
-from recon.weights.held_out import MOST, RATIO, Choice, at_factor, fitted, lifted, vertex
+from recon.weights.held_out import LIMIT, MOST, RATIO, Choice, at_factor, chosen_at, downhill, fitted
+from recon.weights.response import response
+from recon.weights.scoring import scoring_step
 
 SEED = 20_240_520
 CLOSE = 2e-5  # tolerance of the fits whose difference is taken
@@ -32,9 +33,8 @@ class _Fits:
     bounds: tuple[float, float]
     images: dict[float, np.ndarray] = field(default_factory=dict)
 
-    def problem(self, factor: float, likelihood: Likelihood | None = None) -> Problem:
-        terms = at_factor(self.terms, self.is_open, factor)
-        return Problem(likelihood or self.likelihood, terms, self.bounds)
+    def problem(self, factor: float) -> Problem:
+        return Problem(self.likelihood, at_factor(self.terms, self.is_open, factor), self.bounds)
 
     def at(self, factor: float) -> np.ndarray:
         if factor not in self.images:
@@ -57,8 +57,8 @@ def discrepancy(
 
     def excess(factor: float) -> float:
         if factor not in found:
-            squares = _residual(likelihood, fits.at(factor)) ** 2 * _information(likelihood, fits.at(factor))
-            found[factor] = float(np.sum(squares - 1.0, where=likelihood.has_data))
+            off, information, _ = scoring_step(likelihood, fits.at(factor))
+            found[factor] = float(np.sum(off**2 * information - 1.0, where=likelihood.has_data))
         return found[factor]
 
     at = 0
@@ -69,11 +69,8 @@ def discrepancy(
     score = np.array([found[f] for f in factors])
     crossed = score.min() < 0.0 <= score.max()
     factor = float(np.exp(np.interp(0.0, score, np.log(factors)))) if crossed else RATIO**at
-    note = (
-        ""
-        if crossed
-        else f"residuals stay {'below' if score[-1] < 0.0 else 'above'} noise at any weight tried"
-    )
+    side = "below" if score[-1] < 0.0 else "above"
+    note = "" if crossed else f"residuals stay {side} noise at any weight tried"
     return Choice(factor, None, factors, score, np.full(factors.size, np.nan), 0, not crossed, note)
 
 
@@ -85,8 +82,8 @@ def least_risk(
         sum of (x - v)^2 + 2 var(v) dx / dv,     v the unbiased estimate of each pixel
 
     is the squared error but for a constant, for Gaussian readings exactly (Stein 1981), for Poisson counts
-    to first order (Chen 1975; Hudson 1978). The sum of var dx / dv is found from
-    fits to data moved by their noise, up or down at random (Ramani, Blu and Unser 2008), the same for all
+    to first order (Chen 1975; Hudson 1978). The sum of var dx / dv is found from fits to data
+    moved by a quarter of their noise, up or down at random (Ramani, Blu and Unser 2008), the same for all
     weights.
 
     Raises InputError for a likelihood whose score is not linear (`Likelihood.has_linear_score`).
@@ -102,41 +99,20 @@ def least_risk(
     def risk(factor: float) -> float:
         if factor not in found:
             x = fits.at(factor)
-            root = np.sqrt(_information(likelihood, x))
-            ends = [
-                fitted(fits.problem(factor, Tilted(likelihood, way * NUDGE * signs * root, x)), x, CLOSE)
-                for way in (1.0, -1.0)
-            ]
-            off = _residual(likelihood, x)
-            variance = _variance(likelihood, x - off)
-            gives = variance / NUDGE * root * signs * (ends[0].astype(np.float64) - ends[1])
-            squares = off**2
-            found[factor] = float(np.sum(squares + gives, where=likelihood.has_data))
+            off, information, _ = scoring_step(likelihood, x)
+            root = np.sqrt(information)
+            gives = response(fits.problem(factor), NUDGE * signs * root, x, CLOSE, LIMIT)
+            moved = _variance(likelihood, x - off) / NUDGE * root * signs * gives
+            found[factor] = float(np.sum(off**2 + moved, where=likelihood.has_data))
         return found[factor]
 
-    at = 0
-    for direction in (1, -1):
-        while len(found) < MOST and risk(RATIO ** (at + direction)) < risk(RATIO**at):
-            at += direction
+    best = downhill(risk, found)
     factors = np.array(sorted(found))
     score = np.array([found[f] for f in factors])
-    score -= score.min()
-    best = RATIO**at
-    at_edge = best in (factors[0], factors[-1])
-    factor = best if at_edge else vertex(factors, score, int(np.searchsorted(factors, best)))
-    note = f"the best weight is at the end of the path, {best:.3g} times the rule of thumb" if at_edge else ""
-    return Choice(factor, None, factors, score, np.full(factors.size, np.nan), 0, at_edge, note)
+    return chosen_at(best, factors, score - score.min(), np.full(factors.size, np.nan))
 
 
 WHOLE_DATA: dict[str, Callable[..., Choice]] = {"discrepancy": discrepancy, "risk": least_risk}
-
-
-def _residual(likelihood: Likelihood, image: np.ndarray) -> np.ndarray:
-    """Return (dL/dx) / I, which is x - v where the score is linear; 0 without data."""
-    x = lifted(image, likelihood)
-    with np.errstate(divide="ignore", invalid="ignore"):
-        off = likelihood.gradient(x) / likelihood.fisher_information(x)
-    return np.where(likelihood.has_data & np.isfinite(off), off, 0.0)
 
 
 def _variance(likelihood: Likelihood, estimate: np.ndarray) -> np.ndarray:
@@ -144,8 +120,3 @@ def _variance(likelihood: Likelihood, estimate: np.ndarray) -> np.ndarray:
     with np.errstate(divide="ignore", invalid="ignore"):
         variance = 1.0 / likelihood.fisher_information(estimate)
     return np.where(np.isfinite(variance), variance, 0.0)
-
-
-def _information(likelihood: Likelihood, image: np.ndarray) -> np.ndarray:
-    information = likelihood.fisher_information(lifted(image, likelihood))
-    return np.where(likelihood.has_data & np.isfinite(information), information, 0.0)
