@@ -11,6 +11,7 @@ from scipy.special import ndtri
 
 from recon.acquisition import Counts, Frames, TimeHistogram, TimeTags
 from recon.errors import InputError
+from recon.imaging.blocks import sum_with_error
 from recon.imaging.image import PhysicalImage
 from recon.imaging.reconstruct import reconstruct
 from recon.problem import Prior, Sum
@@ -18,7 +19,6 @@ from recon.solvers import State
 from recon.uncertainty.freedom import Freedom, degrees_of_freedom
 from recon.weights import held_out_scores
 
-BLOCK = 8  # pixels a side, taken as independent of each other
 CHANCE = 0.05  # that a difference is called one where there is none, over all priors
 
 NO_DIFFERENCE = "no difference that the data can show"
@@ -106,22 +106,12 @@ def compare(
     limit = float(ndtri(1.0 - 0.5 * CHANCE / (len(priors) - 1)))
     candidates = []
     for index, (prior, image) in enumerate(zip(priors, images, strict=True)):
-        difference, error = _paired(scores[index] - scores[best])
+        difference, error = sum_with_error(scores[index] - scores[best])
         freedom = degrees_of_freedom(image.problem, image.image, 0.05 * image.tolerance)
         as_good = difference <= limit * error
         candidates.append(Candidate(prior, image, difference, error, as_good, freedom, seconds[index]))
     verdict = _verdict(candidates, best)
     return Comparison(kind, tuple(candidates), best, len(images[0].held_out), verdict)
-
-
-def _paired(difference: np.ndarray) -> tuple[float, float]:
-    """Return the sum of a map and its standard error, from blocks."""
-    blocks = difference
-    for axis in (0, 1):
-        blocks = np.add.reduceat(blocks, np.arange(0, blocks.shape[axis], BLOCK), axis=axis)
-    number = max(blocks.size, 2)
-    spread = float(np.sum((blocks - blocks.mean()) ** 2)) * number / (number - 1)
-    return float(difference.sum()), float(np.sqrt(spread))
 
 
 def _verdict(candidates: Sequence[Candidate], best: int) -> str:

@@ -10,9 +10,8 @@ from numpy.typing import NDArray
 
 from recon.acquisition import Frames
 from recon.errors import InputError
+from recon.imaging.blocks import sum_with_error
 from recon.imaging.electron_yield import some
-
-_BLOCK = 8  # pixels a side, taken as independent of each other
 
 
 @dataclass(frozen=True)
@@ -78,16 +77,9 @@ def held_out_error(
         v, seen = _ratio(frames, held)
         terms += (image * image - 2.0 * image * v) / folds
         share += float(1.0 - seen[usable].sum() / primaries[usable].sum()) / folds
-    return HeldOutError(float(terms[usable].mean()), _standard_error(terms, usable), share, folds)
-
-
-def _standard_error(terms: NDArray, usable: NDArray) -> float:
-    """Return the standard error of the mean; neighbours may share noise through the fit."""
-    rest = np.where(usable, terms - terms[usable].mean(), 0.0)
-    for axis in (0, 1):
-        rest = np.add.reduceat(rest, np.arange(0, rest.shape[axis], _BLOCK), axis=axis)
-    blocks = max(rest.size, 2)
-    return float(np.sqrt(np.sum(rest**2) * blocks / (blocks - 1)) / np.count_nonzero(usable))
+    mean = float(terms[usable].mean())
+    _, error = sum_with_error(np.where(usable, terms - mean, 0.0))
+    return HeldOutError(mean, error / np.count_nonzero(usable), share, folds)
 
 
 def _ratio(frames: Frames, chosen: NDArray) -> tuple[NDArray, NDArray]:

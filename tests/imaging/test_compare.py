@@ -7,7 +7,8 @@ from scipy.ndimage import gaussian_filter
 import priors
 import recon
 from recon.errors import InputError
-from recon.imaging.compare import BLOCK, NO_DIFFERENCE, _paired, compare
+from recon.imaging.blocks import SIDE, sum_with_error
+from recon.imaging.compare import NO_DIFFERENCE, compare
 from recon.likelihoods import Poisson
 from recon.weights import HeldOutFit, held_out_scores
 
@@ -109,7 +110,7 @@ def test_the_paired_standard_error_over_simulated_held_out_sets() -> None:
     for seed in range(200):
         parts = [score for _, score in Poisson(drawn(truth, seed)).folds(3, seed)]
         scores = held_out_scores([[HeldOutFit(image, part) for part in parts] for image in (one, other)])
-        difference, error = _paired(scores[0] - scores[1])
+        difference, error = sum_with_error(scores[0] - scores[1])
         differences.append(difference)
         errors.append(error)
     ratio = np.sqrt(np.mean(np.square(errors))) / np.std(differences, ddof=1)
@@ -120,14 +121,14 @@ def test_the_paired_standard_error_over_simulated_held_out_sets() -> None:
 def test_blocks_of_noise_add_up() -> None:
     """Independent pixels, at a size that no block divides: the root of the sum of variances."""
     rng = np.random.default_rng(0)
-    shape = (5 * BLOCK + 3, 6 * BLOCK + 1)
+    shape = (5 * SIDE + 3, 6 * SIDE + 1)
     errors = []
     for _ in range(400):
-        difference, error = _paired(rng.standard_normal(shape))
+        difference, error = sum_with_error(rng.standard_normal(shape))
         errors.append(error**2)
         assert abs(difference) < 6.0 * np.sqrt(shape[0] * shape[1])
     assert np.mean(errors) == pytest.approx(shape[0] * shape[1], rel=0.08)
-    ones = _paired(np.ones((16, 16)))
+    ones = sum_with_error(np.ones((16, 16)))
     assert ones == (256.0, 0.0)
 
 
