@@ -18,10 +18,8 @@ REACH = 3.0  # of the pulse's core, within which tags are asked
 CERTAIN = 0.02  # largest chance of a wrong surface in a pixel that is asked
 DRAWS = 5
 REFITS = 2  # tags near a surface are many, so that few draws tell what is expected
-ROUGHLY, LIMIT = (
-    3e-2,
-    200,
-)  # gap and iterations of a refit: what is left moves surfaces by little of the pulse
+ROUGHLY = 3e-2  # gap of a refit: what is left moves surfaces by little of the pulse
+LIMIT = 200  # iterations of a refit
 PASSED = 0.15  # relative difference of the width that is let pass: the shape of a pulse is known no better
 FEW = 100  # tags within reach below which the width is not asked
 
