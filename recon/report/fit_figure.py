@@ -97,7 +97,7 @@ def _draw_histogram(axes: Axes, histogram: Histogram, of_tags: bool) -> None:
     """Draw how many fell into each class, and how many the law expects."""
     edges, middle = histogram.edges, 0.5 * (histogram.edges[1:] + histogram.edges[:-1])
     axes.stairs(histogram.counts, edges, fill=True, color="#b9cfde", label="observed")
-    axes.plot(middle, histogram.expected, color=ACCENT, linewidth=1.5, label="law of the true image")
+    axes.plot(middle, histogram.expected, color=ACCENT, linewidth=1.5, label="if the model is right")
     axes.set_xlim(edges[0], edges[-1])
     axes.set_ylim(bottom=0.0)
     title = "Tags about the surface" if of_tags else "Their histogram"
