@@ -7,7 +7,7 @@ from numpy.typing import ArrayLike
 from scipy.special import betaincinv, gammaincinv
 
 from recon.errors import InputError
-from recon.validation import whole_numbers
+from recon.validation import refuse, whole_numbers
 
 
 def garwood(count: ArrayLike, share: float = 0.95) -> tuple[np.ndarray, np.ndarray]:
@@ -34,8 +34,7 @@ def clopper_pearson(
     k, n, tail = _counts(count, "count"), _counts(trials, "trials"), _tail(share)
     k, n = np.broadcast_arrays(k, n)
     if np.any(k > n):
-        place = tuple(int(i) for i in np.argwhere(k > n)[0])
-        raise InputError(f"count at {place} is {k[place]:g} in {n[place]:g} trials; give no more than those.")
+        refuse("count", k, k > n, "no more detections than trials")
     failed = n - k
     low = np.where(k > 0.0, betaincinv(np.maximum(k, 1.0), failed + 1.0, tail), 0.0)
     a = np.where(ends_with_detection, k, k + 1.0)

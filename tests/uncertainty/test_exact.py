@@ -149,7 +149,7 @@ def test_what_cannot_be_used_is_refused() -> None:
             garwood(1, share)
         with pytest.raises(InputError, match="share is"):
             clopper_pearson(1, 2, share)
-    with pytest.raises(InputError, match=r"count at \(1,\) is 5 in 4 trials"):
+    with pytest.raises(InputError, match=r"count at \(1,\) is 5.0; give no more detections"):
         clopper_pearson([1, 5], 4)
     with pytest.raises(InputError, match="trials"):
         clopper_pearson(1, 2.5)
