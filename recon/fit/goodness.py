@@ -101,7 +101,7 @@ def goodness(
     Tests of numbers (reflectivity and yield), each against data drawn from the image and fitted again:
         dispersion (`recon.fit.dispersion`): too little = pile-up, too much = overdispersion. For the latter
             the expectation grows by what draws from a rougher image say of structure lost in smoothing
-            (`recon.fit.refits`), extrapolated to twice the step;
+            (`recon.fit.refits`), extrapolated to one and a half steps;
         lone bright pixels (`recon.fit.tails`) = hot pixels;
         held-out scores at a quarter of the weights and at four times them (`recon.fit.weight`), unless
             held-out data chose them.

@@ -20,6 +20,7 @@ from recon.likelihoods.poisson import Poisson
 OVER, UNDER, LONE = 0.03, 0.003, 0.003  # chances of a false alarm
 # Differences that are let pass: of the dispersion, and of the share of lone bright pixels.
 PASSED, PASSED_LONE = 0.02, 3e-3
+LOST = 1.5  # steps towards the rougher image, for the structure that is lost in smoothing (measured)
 ALL_SCATTER = 0.5  # share of an excess of dispersion that is left without bright pixels, if all scatter
 
 
@@ -84,9 +85,8 @@ def _index_statistics(
     else:
         base, spread = 1.0, dispersion_deviation(law, likelihood.has_data)
     (plain, plain_error), (rough, rough_error) = drawn.offset(), drawn.rough_offset()
-    # from no step towards the rougher image to two of them
-    texture = max(2.0 * (rough - plain), 0.0)
-    error = np.hypot(spread, np.hypot(plain_error, 2.0 * rough_error))
+    texture = max(LOST * (rough - plain), 0.0)
+    error = np.hypot(spread, np.hypot(plain_error, LOST * rough_error))
     name = "dispersion"
     index, fitted = observed.dispersion, base + plain
     under = normal_statistic(name, index, fitted, np.hypot(spread, plain_error), -1, UNDER)

@@ -11,11 +11,9 @@ from recon.acquisition import Frames
 from recon.fit.statistic import Statistic
 from recon.imaging.electron_yield import frame_folds
 from recon.imaging.image import PhysicalImage
-from recon.likelihoods.contract import Likelihood
 from recon.likelihoods.poisson_marks import PoissonMarks
-from recon.weights.held_out import Fold, WeightPath
-from recon.weights.settle import FOLDS, SEED
-from recon.weights.thumb import for_part, typical_information
+from recon.weights.held_out import WeightPath
+from recon.weights.settle import FOLDS, SEED, folds_at
 
 APART = 4.0
 
@@ -51,21 +49,14 @@ def weight_test(image: PhysicalImage, acquisition: object, large: float, small: 
         return None
     else:
         pairs = likelihood.folds(FOLDS, SEED)
-    path = WeightPath([_fold(image, fit, score) for fit, score in pairs], None)
+    terms, is_open = image.priors, (True,) * len(image.priors)
+    path = WeightPath(folds_at(terms, is_open, likelihood, pairs, image.bounds, image.image), None)
     path.at(1.0)
     lighter = _compared(path, 1.0 / APART, "held-out score of a quarter of the weight", large)
     if lighter.denies:
         return WeightTest((lighter,), min((1.0 / APART, 0.5), key=path.at))
     heavier = _compared(path, APART, "held-out score of four times the weight", small)
     return WeightTest((lighter, heavier), APART if heavier.denies else 1.0)
-
-
-def _fold(image: PhysicalImage, fit: Likelihood, score: Likelihood) -> Fold:
-    whole, part = typical_information(image.problem.likelihood), typical_information(fit)
-    terms = tuple(for_part(term, part, whole) for term in image.priors)
-    low, high = image.bounds
-    bounds = low, max(high, fit.default_bounds[1])
-    return Fold(fit, score, terms, (True,) * len(terms), bounds, image.image)
 
 
 def _compared(path: WeightPath, factor: float, name: str, threshold: float) -> Statistic:

@@ -14,7 +14,7 @@ from recon.weights.held_out import Choice, Fold, HeldOutFit, at_factor, choose, 
 from recon.weights.thumb import for_part, typical_information, weigh
 from recon.weights.whole_data import WHOLE_DATA
 
-FOLDS = 3
+FOLDS = 4
 SEED = 20_240_517  # of the folds: the same data give the same weight
 RULES = ("auto", "rule", *WHOLE_DATA)
 
@@ -71,10 +71,7 @@ def settle(
         chosen = WHOLE_DATA[rule](likelihood, settled, is_open, bounds)
         return Settled(at_factor(settled, is_open, chosen.factor), chosen)
     pairs = (folds or likelihood.folds)(FOLDS, SEED)
-    chosen, images = choose(
-        [Fold(fit, score, tuple(weigh(prior, fit)), is_open, _wider(bounds, fit)) for fit, score in pairs],
-        callback,
-    )
+    chosen, images = choose(folds_at(settled, is_open, likelihood, pairs, bounds), callback)
     fits = tuple(HeldOutFit(image, score) for image, (_, score) in zip(images, pairs, strict=True))
     return Settled(at_factor(settled, is_open, chosen.factor, chosen.second_order), chosen, fits)
 
@@ -89,14 +86,29 @@ def held_out_fits(
     """Return fits to parts of the data, at weights given for all of them; empty if too few."""
     if not likelihood.can_be_shared_out or any(term.conic_only for term in terms):
         return ()
-    whole, fits = typical_information(likelihood), []
-    for fit, score in (folds or likelihood.folds)(FOLDS, SEED):
+    pairs = (folds or likelihood.folds)(FOLDS, SEED)
+    return tuple(
+        HeldOutFit(fitted(Problem(one.fit, one.terms, one.bounds), start, one.tolerance), one.score)
+        for one in folds_at(terms, (True,) * len(terms), likelihood, pairs, bounds)
+    )
+
+
+def folds_at(
+    terms: Sequence[Prior],
+    is_open: tuple[bool, ...],
+    likelihood: Likelihood,
+    pairs: Pairs,
+    bounds: tuple[float, float],
+    start: np.ndarray | None = None,
+) -> list[Fold]:
+    """Return the pairs as folds, to be fitted at weights that suit a part if the given ones suit all data.
+
+    The upper bound is raised to what a share of the data can show.
+    """
+    whole, folds = typical_information(likelihood), []
+    for fit, score in pairs:
         known = typical_information(fit)
-        problem = Problem(fit, [for_part(term, known, whole) for term in terms], _wider(bounds, fit))
-        fits.append(HeldOutFit(fitted(problem, start), score))
-    return tuple(fits)
-
-
-def _wider(bounds: tuple[float, float], likelihood: Likelihood) -> tuple[float, float]:
-    """Return bounds that do not cut off what a share of the data makes larger."""
-    return bounds[0], max(bounds[1], likelihood.default_bounds[1])
+        parts = tuple(for_part(term, known, whole) for term in terms)
+        wide = bounds[0], max(bounds[1], fit.default_bounds[1])
+        folds.append(Fold(fit, score, parts, is_open, wide, start))
+    return folds

@@ -52,7 +52,7 @@ def test_the_better_prior_is_not_called_worse(scene, seed: int) -> None:
 
 @pytest.mark.parametrize("seed", range(2))
 def test_the_difference_is_that_of_the_true_errors(seed: int) -> None:
-    """Of the fits to two thirds, three of them, each scored in every pixel."""
+    """Of the fits to three quarters, four of them, each scored in every pixel."""
     truth = blocks()
     found = compare(drawn(truth, seed), [QUADRATIC, TOTAL])
     worse, best = (
@@ -76,7 +76,7 @@ def test_a_prior_is_as_good_as_itself(acquisition: str) -> None:
     assert all(each.as_good for each in found.candidates)
     assert found.verdict == f"{NO_DIFFERENCE} between TotalVariation and TotalVariation"
     assert found.kind == ("electron_yield" if acquisition == "frames" else "reflectivity")
-    assert found.folds == 3
+    assert found.folds == 4
 
 
 def test_depth_is_compared_by_its_tags() -> None:

@@ -24,7 +24,7 @@ def test_counts_and_readings_give_the_yield() -> None:
     for frames in (counted, read):
         image = recon.reconstruct(frames).electron_yield
         assert np.mean((image.image - eta) ** 2) < 0.15 * np.mean((counted_ratio(counted) - eta) ** 2)
-        assert image.choice.folds == 3
+        assert image.choice.folds == 4
         assert image.notes == ()
 
 

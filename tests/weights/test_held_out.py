@@ -50,7 +50,7 @@ def test_the_chosen_weight_loses_little_against_the_best(kind: str, seed: int) -
     )
     assert best - decibels(chosen) < 0.3
     assert not choice.at_edge
-    assert choice.folds == 3
+    assert choice.folds == 4
     assert choice.score.min() == 0.0
     assert np.all(np.diff(choice.factors) > 0.0)
 
