@@ -21,7 +21,6 @@ from recon.imaging.compare import compare
 from recon.report import words
 from recon.report.comparison import ComparisonPicture, comparison_record, save_comparison
 from recon.report.record import acquisition_record
-from recon.solvers import State
 
 
 def run(options: Namespace) -> int:
@@ -33,12 +32,18 @@ def run(options: Namespace) -> int:
     with output_folder(out) as folder:
         with SolveProgress(options.tolerance, hidden=options.quiet) as progress:
             progress.step(f"{source.name}: starting")
+
+            def turn(index: int) -> None:
+                progress.of = words.spelled(names[index])
+
             comparison = compare(
                 source.acquisition,
                 priors,
                 tolerance=options.tolerance,
                 max_iterations=options.max_iterations,
-                callback=_Told(progress, names),
+                callback=progress,
+                on_weight=progress.of_weight,
+                on_prior=turn,
             )
             progress.step("writing")
             record = _write(folder, source, names, comparison)
@@ -68,29 +73,6 @@ def priors_named(names: Sequence[str]) -> list[Prior]:
             f" {', '.join(CLASSES)}."
         )
     return found
-
-
-class _Told:
-    """Shows solves, with the prior that each belongs to.
-
-    Solves of a prior come in the same order, so that the first image of the first prior, begun anew, is that
-    of the next.
-    """
-
-    def __init__(self, progress: SolveProgress, names: Sequence[str]) -> None:
-        self._progress, self._names = progress, names
-        self._first: str | None = None
-        self._now, self._iteration, self._index = "", 0, -1
-
-    def __call__(self, name: str, state: State) -> None:
-        self._first = self._first or name
-        anew = name != self._now or state.iteration <= self._iteration
-        if anew and name == self._first and self._index + 1 < len(self._names):
-            self._index += 1
-            self._progress.of = words.spelled(self._names[self._index])
-            self._progress.step(self._progress.of)
-        self._now, self._iteration = name, state.iteration
-        self._progress(name, state)
 
 
 def _write(folder: Path, source: Source, names: Sequence[str], comparison: Comparison) -> dict:

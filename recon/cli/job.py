@@ -77,6 +77,7 @@ class Job:
                 tolerance=self.settings.tolerance,
                 max_iterations=self.settings.max_iterations,
                 callback=progress,
+                on_weight=progress.of_weight,
                 unknown_current=self.settings.unknown_current,
                 moving=self.settings.moving,
                 weight=self.settings.weight,

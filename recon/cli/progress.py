@@ -51,6 +51,10 @@ class SolveProgress:
         self._finish()
         self._now = self._bars.add_task(words, total=None, gap="")
 
+    def of_weight(self, name: str, factor: float) -> None:
+        """Show the weight that is tried for an image."""
+        self.step(f"{self._title(name)}: weight {factor:.3g} x the rule of thumb")
+
     def of_fit(self, name: str, share: float) -> None:
         """Show which share of the simulations of an image's fit is done."""
         key = f"fit of {name}"
@@ -64,14 +68,16 @@ class SolveProgress:
         if self._now is None or self._tasks.get(name) != self._now:  # an image may be solved for again
             self._finish()
             self._first[name] = state.relative_gap
-            words = ": ".join(filter(None, (self.of, spelled(name))))
-            self._tasks[name] = self._now = self._bars.add_task(words, total=1.0, gap="")
+            self._tasks[name] = self._now = self._bars.add_task(self._title(name), total=1.0, gap="")
         tolerance = self._tolerance or (depth.TOLERANCE if name == "depth" else task.TOLERANCE)
         self._bars.update(
             self._tasks[name],
             completed=share_done(self._first[name], state.relative_gap, tolerance),
             gap=f"gap {state.relative_gap:.1e} of {tolerance:.0e}, iteration {state.iteration}",
         )
+
+    def _title(self, name: str) -> str:
+        return ": ".join(filter(None, (self.of, spelled(name))))
 
     def _finish(self) -> None:
         if self._now is not None:

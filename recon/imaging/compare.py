@@ -70,6 +70,8 @@ def compare(
     tolerance: float | None = None,
     max_iterations: int = 30_000,
     callback: Callable[[str, State], object] | None = None,
+    on_weight: Callable[[str, float], object] | None = None,
+    on_prior: Callable[[int], object] | None = None,
 ) -> Comparison:
     """Reconstruct under each prior, and compare how well the fits to a part of the data predict the rest.
 
@@ -80,7 +82,8 @@ def compare(
 
     For time tags it is the prior of depth that is compared.
 
-    priors: two or more. tolerance, max_iterations, callback: see `recon.reconstruct`.
+    priors: two or more. tolerance, max_iterations, callback, on_weight: see `recon.reconstruct`. on_prior:
+        called with the place of each prior as its turn comes.
 
     Raises InputError.
     """
@@ -88,10 +91,17 @@ def compare(
     if len(priors) < 2:
         raise InputError(f"priors holds {len(priors)}; give two or more to compare.")
     images, seconds = [], []
-    for prior in priors:
+    for index, prior in enumerate(priors):
+        if on_prior is not None:
+            on_prior(index)
         began = time.perf_counter()
         result = reconstruct(
-            acquisition, prior, tolerance=tolerance, max_iterations=max_iterations, callback=callback
+            acquisition,
+            prior,
+            tolerance=tolerance,
+            max_iterations=max_iterations,
+            callback=callback,
+            on_weight=on_weight,
         )
         seconds.append(time.perf_counter() - began)
         kind, image = list(result.images.items())[-1]

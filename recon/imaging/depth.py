@@ -117,15 +117,15 @@ def depth(
     is_open = [term.weight is None for term in prior.terms()]
     enough, choice, halves = likelihood.can_be_shared_out, None, ()
     if effort.weight != "rule" and any(is_open) and enough:
-        terms, choice, halves = chosen_terms(terms, is_open, likelihood, start, bounds, tolerance)
+        told = effort.of_weight("depth")
+        terms, choice, halves = chosen_terms(terms, is_open, likelihood, start, bounds, tolerance, told)
     problem = Problem(likelihood, terms, bounds)
-    told = effort.callback
     solution = solve(
         problem,
         tolerance=tolerance,
         max_iterations=effort.max_iterations,
         start=start,
-        callback=None if told is None else lambda state: told("depth", state),
+        callback=effort.of_state("depth"),
     )
     signal = likelihood.signal_tags(solution.image).astype(np.float32)
     reach = SURFACE * likelihood.pulse.core

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 
 import numpy as np
 from scipy.ndimage import gaussian_filter
@@ -28,6 +28,7 @@ def chosen_terms(
     start: np.ndarray,
     bounds: tuple[float, float],
     tolerance: float,
+    callback: Callable[[float], object] | None = None,
 ) -> tuple[list[Prior], Choice, tuple[HeldOutFit, ...]]:
     """Return the priors with the open weights that predict held-out tags best, the choice, and its fits.
 
@@ -38,7 +39,7 @@ def chosen_terms(
     (fit, score), (other, other_score) = likelihood.folds(FOLDS, SEED)
     scaled = _scaled(terms, fit, likelihood, start)
     fold = Fold(fit, score, scaled, tuple(is_open), bounds, start, tolerance, LIMIT)
-    choice, images = choose([fold], second_order=False)
+    choice, images = choose([fold], callback, second_order=False)
     best = float(choice.factors[np.argmin(choice.score)])
     problem = Problem(other, at_factor(_scaled(terms, other, likelihood, start), is_open, best), bounds)
     fits = (HeldOutFit(images[0], score), HeldOutFit(fitted(problem, start, tolerance, LIMIT), other_score))

@@ -82,6 +82,7 @@ def _at_shifts(
         still.default_bounds,
         effort.weight,
         lambda number, seed: frame_folds(frames, number, seed),
+        effort.of_weight("electron_yield"),
     )
     moved, prior = MovingFrames(frames, shifts), Sum(*settled.terms)
     image = image_of("electron_yield", moved, prior, "1", replace(effort, judge=False), notes=notes)

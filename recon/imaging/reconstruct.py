@@ -21,6 +21,7 @@ def reconstruct(
     tolerance: float | None = None,
     max_iterations: int = 30_000,
     callback: Callable[[str, State], object] | None = None,
+    on_weight: Callable[[str, float], object] | None = None,
     weight: str = "auto",
     unknown_current: bool = False,
     moving: bool = False,
@@ -43,6 +44,7 @@ def reconstruct(
     unknown_current, moving: for Frames, whether to estimate the dose of every line from the frames, and
         whether to register frames that moved; see `recon.imaging.electron_yield`.
     callback: called with the name of the image and the state, as solving goes on; True stops that image.
+    on_weight: called with the name of the image and each factor of the rule of thumb that is tried.
 
     Raises InputError for an argument that cannot be used.
     """
@@ -57,7 +59,7 @@ def reconstruct(
     if (unknown_current or moving) and not isinstance(acquisition, Frames):
         name = "unknown_current" if unknown_current else "moving"
         raise InputError(f"{name} is for Frames; leave it out for a {type(acquisition).__name__}.")
-    effort = Effort(tolerance, max_iterations, callback, checked_rule(weight))
+    effort = Effort(tolerance, max_iterations, callback, on_weight, checked_rule(weight))
     if isinstance(acquisition, Counts):
         from recon.imaging.reflectivity import reflectivity
 

@@ -28,10 +28,22 @@ class Effort:
     max_iterations: int = 30_000
     callback: Callable[[str, State], object] | None = None
     """Called with the name of the image and the state."""
+    on_weight: Callable[[str, float], object] | None = None
+    """Called with the name of the image and each factor of the rule of thumb that is tried."""
     weight: str = "auto"
     """How to set weights that a prior leaves open, see `recon.reconstruct`."""
     judge: bool = True
     """Whether to hold data out for the uncertainty; if not, it is that of each pixel by itself."""
+
+    def of_weight(self, name: str) -> Callable[[float], object] | None:
+        """Return whom to tell of the factors that are tried for an image."""
+        told = self.on_weight
+        return None if told is None else lambda factor: told(name, factor)
+
+    def of_state(self, name: str) -> Callable[[State], object] | None:
+        """Return whom to tell of the states of an image."""
+        told = self.callback
+        return None if told is None else lambda state: told(name, state)
 
 
 def image_of(
@@ -49,10 +61,10 @@ def image_of(
     folds: see `recon.weights.settle`. notes: see `PhysicalImage`.
     """
     bounds = likelihood.default_bounds
-    settled = settle(default_prior() if prior is None else prior, likelihood, bounds, effort.weight, folds)
+    prior = default_prior() if prior is None else prior
+    settled = settle(prior, likelihood, bounds, effort.weight, folds, effort.of_weight(name))
     terms, choice = settled.terms, settled.choice
     problem = Problem(likelihood, terms, bounds)
-    told = effort.callback
     tolerance = TOLERANCE if effort.tolerance is None else effort.tolerance
     solution = solve(
         problem,
@@ -60,7 +72,7 @@ def image_of(
         tolerance=tolerance,
         max_iterations=effort.max_iterations,
         start=start,
-        callback=None if told is None else lambda state: told(name, state),
+        callback=effort.of_state(name),
     )
     fits = settled.fits
     if effort.judge and not fits:

@@ -57,6 +57,7 @@ def settle(
         = by all data (`whole_data`).
     folds: called with a number and a seed, gives the likelihoods to fit and to score; that of the
         likelihood if left out.
+    callback: called with every factor that is tried.
     """
     terms = list(prior.terms())
     is_open = tuple(term.weight is None for term in terms)
@@ -68,7 +69,7 @@ def settle(
         note = "too few detections to hold any out: the weight is the rule of thumb's"
         return Settled(settled, Choice(1.0, None, nothing, nothing, nothing, 0, False, note))
     if rule in WHOLE_DATA:
-        chosen = WHOLE_DATA[rule](likelihood, settled, is_open, bounds)
+        chosen = WHOLE_DATA[rule](likelihood, settled, is_open, bounds, callback)
         return Settled(at_factor(settled, is_open, chosen.factor), chosen)
     pairs = (folds or likelihood.folds)(FOLDS, SEED)
     chosen, images = choose(folds_at(settled, is_open, likelihood, pairs, bounds), callback)

@@ -31,6 +31,7 @@ class _Fits:
     terms: Sequence[Prior]
     is_open: Sequence[bool]
     bounds: tuple[float, float]
+    callback: Callable[[float], object] | None = None
     images: dict[float, np.ndarray] = field(default_factory=dict)
 
     def problem(self, factor: float) -> Problem:
@@ -38,6 +39,8 @@ class _Fits:
 
     def at(self, factor: float) -> np.ndarray:
         if factor not in self.images:
+            if self.callback is not None:
+                self.callback(factor)
             near = min(self.images, key=lambda other: abs(math.log(other / factor)), default=None)
             start = None if near is None else self.images[near]
             self.images[factor] = fitted(self.problem(factor), start)
@@ -45,15 +48,20 @@ class _Fits:
 
 
 def discrepancy(
-    likelihood: Likelihood, terms: Sequence[Prior], is_open: Sequence[bool], bounds: tuple[float, float]
+    likelihood: Likelihood,
+    terms: Sequence[Prior],
+    is_open: Sequence[bool],
+    bounds: tuple[float, float],
+    callback: Callable[[float], object] | None = None,
 ) -> Choice:
     """Return the factor at which residuals are as large as noise (Morozov 1966).
 
     The sum over pixels with data of (dL/dx)^2 / I, I the Fisher information at the image, is their number,
     as it is on average at the truth; (count - mean)^2 / mean for Poisson counts. It smooths more than is
-    best, since an image that is right would leave no less. `score` is the sum less the number.
+    best, since an image that is right would leave no less. `score` is the sum less the number. callback:
+    called with every factor that is tried.
     """
-    fits, found = _Fits(likelihood, terms, is_open, bounds), {}
+    fits, found = _Fits(likelihood, terms, is_open, bounds, callback), {}
 
     def excess(factor: float) -> float:
         if factor not in found:
@@ -75,7 +83,11 @@ def discrepancy(
 
 
 def least_risk(
-    likelihood: Likelihood, terms: Sequence[Prior], is_open: Sequence[bool], bounds: tuple[float, float]
+    likelihood: Likelihood,
+    terms: Sequence[Prior],
+    is_open: Sequence[bool],
+    bounds: tuple[float, float],
+    callback: Callable[[float], object] | None = None,
 ) -> Choice:
     """Return the factor with the least unbiased estimate of the squared error.
 
@@ -84,7 +96,7 @@ def least_risk(
     is the squared error but for a constant, for Gaussian readings exactly (Stein 1981), for Poisson counts
     to first order (Chen 1975; Hudson 1978). The sum of var dx / dv is found from fits to data
     moved by a quarter of their noise, up or down at random (Ramani, Blu and Unser 2008), the same for all
-    weights.
+    weights. callback: called with every factor that is tried.
 
     Raises InputError for a likelihood whose score is not linear (`Likelihood.has_linear_score`).
     """
@@ -93,7 +105,7 @@ def least_risk(
             f"weight is 'risk', but {type(likelihood).__name__} has no unbiased estimate of the risk; give"
             " 'auto', which needs none."
         )
-    fits, found = _Fits(likelihood, terms, is_open, bounds), {}
+    fits, found = _Fits(likelihood, terms, is_open, bounds, callback), {}
     signs = np.random.default_rng(SEED).choice((-1.0, 1.0), size=likelihood.shape)
 
     def risk(factor: float) -> float:

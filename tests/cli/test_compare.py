@@ -31,7 +31,7 @@ def test_the_folder_holds_what_compare_finds(run, counts_file, tmp_path, compari
     assert {path.name for path in folder.iterdir()} == FILES
     written = json.loads((folder / "comparison.json").read_text())
     truth = load_truth(counts_file)["reflectivity"].astype(float)
-    assert (written["image"], written["converged"], written["folds"]) == ("reflectivity", True, 3)
+    assert (written["image"], written["converged"], written["folds"]) == ("reflectivity", True, 4)
     assert list(written["priors"])[comparison.best] == written["best"]
     for (name, record), candidate in zip(written["priors"].items(), comparison.candidates, strict=True):
         image = tifffile.imread(folder / f"reflectivity_{name}.tif")
@@ -101,16 +101,16 @@ def test_too_few_detections_are_refused(run, tmp_path):
     assert [path.name for path in tmp_path.iterdir()] == ["dark.h5"]
 
 
-def test_progress_names_the_prior_of_each_solve(monkeypatch):
-    from recon.cli.compare import _Told
+def test_progress_names_the_prior_of_each_weight_and_solve(run, counts_file, monkeypatch):
     from recon.cli.progress import SolveProgress
-    from recon.solvers import State
 
     seen = []
-    progress = SolveProgress(hidden=True)
     monkeypatch.setattr(SolveProgress, "__call__", lambda self, name, state: seen.append((self.of, name)))
-    told = _Told(progress, ["total-variation", "smoothness"])
-    for name, iteration in [("first", 10), ("first", 20), ("depth", 10), ("first", 10), ("depth", 5)]:
-        told(name, State(iteration, np.zeros((2, 2)), 1.0, 0.5, 0.5))
-    one, other = "total variation", "smoothness"
-    assert seen == [(one, "first"), (one, "first"), (one, "depth"), (other, "first"), (other, "depth")]
+    monkeypatch.setattr(SolveProgress, "of_weight", lambda self, name, f: seen.append((self.of, name, f)))
+    run("compare", counts_file, *TWO, "--out", "results", "--quiet")
+    first, second = "total variation", "smoothness"
+    turns = [one[0] for one in seen]
+    assert turns == sorted(turns, key=[first, second].index)
+    for turn in (first, second):
+        assert (turn, "reflectivity", 1.0) in seen
+        assert [one for one in seen if one[0] == turn][-1] == (turn, "reflectivity")

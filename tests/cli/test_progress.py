@@ -47,3 +47,13 @@ def test_an_image_may_be_solved_for_again() -> None:
         for name in ("depth", "reflectivity", "depth", "depth"):
             shown(name, State(10, np.zeros((2, 2)), 1.0, 0.5, 0.5))
             shown(name, State(20, np.zeros((2, 2)), 1.0, 0.9, 0.1))
+
+
+def test_the_weight_that_is_tried_is_shown(monkeypatch):
+    terminal = Console(file=io.StringIO(), force_terminal=True, width=100)
+    monkeypatch.setattr(progress, "Console", lambda **_: terminal)
+    with progress.SolveProgress(1e-4) as shown:
+        shown.of = "smoothness"
+        shown.of_weight("reflectivity", 1.6)
+        shown._bars.refresh()
+        assert "smoothness: reflectivity: weight 1.6 x the rule of thumb" in terminal.file.getvalue()

@@ -170,3 +170,12 @@ def test_what_cannot_be_used_is_refused() -> None:
     few = recon.Counts(np.eye(8, dtype=int), 10)
     with pytest.raises(InputError, match="too few detections to hold any out"):
         compare(few, [TOTAL, QUADRATIC])
+
+
+@pytest.mark.parametrize("rule", ["auto", "discrepancy", "risk"])
+def test_every_factor_that_is_tried_is_told(rule: str) -> None:
+    told = []
+    counts = drawn(blocks(), 0)
+    image = recon.reconstruct(counts, weight=rule, on_weight=lambda *one: told.append(one)).reflectivity
+    assert {name for name, _ in told} == {"reflectivity"}
+    assert sorted(factor for _, factor in told) == image.choice.factors.tolist()
