@@ -102,7 +102,7 @@ def goodness(
         dispersion (`recon.fit.dispersion`): too little = pile-up, too much = overdispersion. For the latter
             the expectation grows by what draws from a rougher image say of structure lost in smoothing
             (`recon.fit.refits`), extrapolated to one and a half steps;
-        lone bright pixels (`recon.fit.tails`) = hot pixels;
+        lone bright pixels, their number and the least likely one (`recon.fit.tails`) = hot pixels;
         held-out scores at a quarter of the weights and at four times them (`recon.fit.weight`), unless
             held-out data chose them.
     Of time tags (depth): their spread about the surface = the pulse, their number away from it = the

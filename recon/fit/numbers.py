@@ -14,10 +14,11 @@ from recon.fit.dispersion import dispersion_deviation
 from recon.fit.refits import DRAWS, Refits, Summary, refits, summary
 from recon.fit.statistic import Finding, Statistic, normal_statistic, simulated_statistic
 from recon.fit.structure import NAMES
+from recon.fit.tails import Brightest, brightest_lone
 from recon.imaging.image import PhysicalImage
 from recon.likelihoods.poisson import Poisson
 
-OVER, UNDER, LONE = 0.03, 0.003, 0.003  # chances of a false alarm
+OVER, UNDER, LONE, BRIGHTEST = 0.03, 0.003, 0.003, 0.001  # chances of a false alarm
 # Differences that are let pass: of the dispersion, and of the share of lone bright pixels.
 PASSED, PASSED_LONE = 0.02, 3e-3
 LOST = 1.5  # steps towards the rougher image, for the structure that is lost in smoothing (measured)
@@ -50,14 +51,19 @@ def judged_numbers(
     statistics += [under, over]
     hot = False
     if law is not None:
-        bright = _lone_statistic(observed, drawn, int(np.count_nonzero(likelihood.has_data)))
-        statistics.append(bright)
+        brightest = brightest_lone(likelihood, image.image)
+        lone = [_lone_statistic(observed, drawn, int(np.count_nonzero(likelihood.has_data)))]
+        if brightest is not None:
+            lone.append(_brightest_statistic(brightest))
+        statistics += lone
         # a law that is too narrow has lone bright pixels, too, but all others scatter as well
         left = observed.trimmed - drawn.trimmed
-        hot = bright.denies and not (over.denies and left > ALL_SCATTER * (over.observed - over.expected))
+        hot = any(one.denies for one in lone) and not (
+            over.denies and left > ALL_SCATTER * (over.observed - over.expected)
+        )
     # noise left in the image is missing in the residuals, structure lost from it is added to them
     rough, smoothed = (any(f.cause == f"weight too {how}" for f in before) for how in ("small", "large"))
-    findings = [words.hot_pixels(bright)] if hot else []
+    findings = [words.hot_pixels(lone[0], brightest)] if hot else []
     if under.denies and not rough:
         findings.append(words.pile_up(under, isinstance(likelihood, Poisson)))
     elif over.denies and not smoothed and not hot:
@@ -72,6 +78,13 @@ def _lone_statistic(observed: Summary, drawn: Refits, pixels: int) -> Statistic:
     found = normal_statistic("lone bright pixels", observed.lone, expected, deviation, 1, LONE)
     few = observed.lone - expected < max(PASSED_LONE * pixels, 3.0)
     return replace(found, p_value=1.0) if few else found
+
+
+def _brightest_statistic(one: Brightest) -> Statistic:
+    """Return the number of the least likely lone pixel, its chance by Bonferroni's bound over all pixels."""
+    return Statistic(
+        "brightest lone pixel", one.number, one.mean, float(np.sqrt(one.variance)), one.chance, BRIGHTEST
+    )
 
 
 def _index_statistics(

@@ -2,13 +2,17 @@
 
 from __future__ import annotations
 
+from dataclasses import dataclass
+
 import numpy as np
 
 from recon.fit.count_laws import CountLaw, WaitingLaw, count_law
 from recon.likelihoods.contract import Likelihood
+from recon.weights.scoring import lifted
 
 RARE = 1e-3  # chance of as much or more, below which a pixel is bright
 RATHER_RARE = 0.02  # the same of pixels that are left out to see whether the others scatter, too
+DARKEST = 0.05  # of the mean of an image: no pixel is taken to be darker where single pixels are judged
 FAR = 1.0  # standard deviations above the mean, below which no tail is worked out
 
 
@@ -32,6 +36,38 @@ def lone_pixels(likelihood: Likelihood, x: np.ndarray, rare: float = RARE) -> np
     excess = _around(np.where(shown, law.number - law.mean, 0.0))
     noise = _around(np.where(shown, law.variance, 0.0))
     return bright & (excess <= 2.0 * np.sqrt(noise) + 1.0)
+
+
+@dataclass(frozen=True)
+class Brightest:
+    """The lone bright pixel that the law allows least.
+
+    row, column: where it is. number, mean, variance: what it holds and its law, at the image without peaks.
+    chance: of as much light or more in any of all pixels, by Bonferroni's bound.
+    """
+
+    row: int
+    column: int
+    number: float
+    mean: float
+    variance: float
+    chance: float
+
+
+def brightest_lone(likelihood: Likelihood, x: np.ndarray) -> Brightest | None:
+    """Return the least likely of the lone bright pixels; None without any, or without a law of single pixels.
+
+    Dark regions count as `DARKEST`: a fit makes them zero, where a single detection would be too much.
+    """
+    lone = lone_pixels(likelihood, x)
+    law = count_law(likelihood, lifted(without_peaks(x), likelihood, DARKEST))
+    if law is None or isinstance(law, WaitingLaw) or not lone.any():
+        return None
+    tails = law.tails(lone)[1]
+    row, column = (int(axis[np.argmin(tails)]) for axis in np.nonzero(lone))
+    number, mean, variance = (float(of[row, column]) for of in (law.number, law.mean, law.variance))
+    chance = min(1.0, float(tails.min()) * int(np.count_nonzero(likelihood.has_data)))
+    return Brightest(row, column, number, mean, variance, chance)
 
 
 def without_peaks(x: np.ndarray) -> np.ndarray:

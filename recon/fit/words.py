@@ -6,6 +6,7 @@ from collections.abc import Iterator
 
 from recon.acquisition import Counts, Frames, TimeHistogram, TimeTags
 from recon.fit.statistic import Finding, Statistic
+from recon.fit.tails import Brightest
 from recon.imaging.background_check import BackgroundCheck
 from recon.imaging.image import PhysicalImage
 from recon.imaging.yield_trend import YieldTrend
@@ -54,12 +55,18 @@ def overdispersion(index: Statistic) -> Finding:
     )
 
 
-def hot_pixels(lone: Statistic) -> Finding:
+def hot_pixels(lone: Statistic, brightest: Brightest | None) -> Finding:
     """Lone pixels are too bright."""
+    most = ""
+    if brightest is not None:
+        most = (
+            f"; the least likely, row {brightest.row}, column {brightest.column}, holds"
+            f" {brightest.number:.4g} where {brightest.mean:.2g} are expected"
+        )
     return Finding(
         "hot pixels",
         f"{lone.observed:.0f} pixels are brighter than their law allows while their neighbours are not,"
-        f" {lone.expected:.1f} +- {lone.standard_deviation:.1f} expected",
+        f" {lone.expected:.1f} +- {lone.standard_deviation:.1f} expected{most}",
         "mask the pixels of `lone`, or give their dark counts in a background map, and ask again",
     )
 

@@ -55,6 +55,23 @@ def test_pile_up(seed):
     assert "several_per_trial=False" in found.verdict
 
 
+@pytest.mark.parametrize("seed", range(3))
+def test_a_hot_pixel_that_the_image_follows(seed):
+    """Held-out parts of it say the same, so that the chosen weight lets the image follow."""
+    rng = np.random.default_rng(seed)
+    scene = np.full((24, 32), 2.0)
+    scene[6:16, 8:22] = 5.0
+    counts = rng.poisson(scene)
+    assert goodness(recon.reconstruct(several(counts))).fits
+    counts[3, 3] = counts[12, 25] = 30
+    result = recon.reconstruct(several(counts))
+    assert result.reflectivity.image[3, 3] > 8.0
+    found = goodness(result)
+    assert [f.cause for f in found.findings] == ["hot pixels"]
+    assert found.images["reflectivity"].lone[3, 3]
+    assert "row 3, column 3" in found.verdict or "row 12, column 25" in found.verdict
+
+
 @pytest.mark.parametrize("seed", SEEDS)
 def test_hot_pixels(seed):
     rng = np.random.default_rng(seed)

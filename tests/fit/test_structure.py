@@ -2,10 +2,11 @@
 
 import numpy as np
 import pytest
+from scipy.stats import poisson
 
 import recon
 from recon.fit.structure import structure
-from recon.fit.tails import lone_pixels, without_peaks
+from recon.fit.tails import brightest_lone, lone_pixels, without_peaks
 from recon.likelihoods import Poisson
 
 
@@ -47,6 +48,25 @@ def test_a_lone_pixel_and_a_bright_patch():
     followed = level.copy()
     followed[5, 5] = 10.0
     np.testing.assert_array_equal(lone_pixels(likelihood, followed), found)
+
+
+def test_the_least_likely_lone_pixel():
+    """Its chance against scipy's Poisson law, over all 400 pixels; in the dark the law of a twentieth."""
+    counts = np.ones((20, 20), int)
+    counts[5, 5], counts[15, 8] = 9, 12
+    likelihood = Poisson(recon.Counts(counts, 1, several_per_trial=True))
+    found = brightest_lone(likelihood, np.ones((20, 20)))
+    assert (found.row, found.column, found.number) == (15, 8, 12.0)
+    assert found.mean == found.variance == pytest.approx(1.0)
+    assert found.chance == pytest.approx(400 * poisson.sf(11, 1.0), rel=1e-6)
+    half = np.ones((20, 20))
+    half[:, :10] = counts[:, :10] = 0.0
+    counts[15, 8] = 4
+    dark = brightest_lone(Poisson(recon.Counts(counts, 1, several_per_trial=True)), half)
+    assert dark.mean == pytest.approx(0.05 * half.mean(), rel=1e-6)
+    assert dark.chance == pytest.approx(400 * poisson.sf(3, 0.025), rel=1e-5)
+    even = Poisson(recon.Counts(np.ones((20, 20), int), 1, several_per_trial=True))
+    assert brightest_lone(even, np.ones((20, 20))) is None
 
 
 def test_peaks_of_one_pixel_are_cut():
