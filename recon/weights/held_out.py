@@ -20,8 +20,8 @@ from recon.problem import Prior, Problem
 from recon.solvers import solve
 from recon.weights.scoring import lifted
 
-RATIO = 1.6  # of neighbouring factors on the path
-MOST = 12  # factors tried
+RATIO = 1.4  # of neighbouring factors on the path: a parabola through three spans the best one
+MOST = 16  # factors tried
 TOLERANCE = 2e-3  # of the fits: changes the weight by less than 1 % (measured)
 LIMIT = 4000  # iterations of a fit
 
