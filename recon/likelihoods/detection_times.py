@@ -83,11 +83,11 @@ class DetectionTimes(Likelihood):
         self.noise = np.where(signal > 0.0, ratio, MOST) / self.pulse.period
         self.law = tags.pulse
         self.metres = SPEED_OF_LIGHT / (2.0 * tags.refractive_index)  # per second
-        self.start = tags.start
+        self.start = np.array(tags.start)  # writable, as that of folds is: one type to compile kernels for
         delay = np.atleast_2d(np.asarray(tags.time_zero + tags.offset, np.float64))
         period = self.pulse.period
         time = tags.time if tags.dither is None else tags.time - tags.dither
-        self.y = kernels.ranges(time, tags.start, self.shape[1], delay, self.metres, period)
+        self.y = kernels.ranges(time, self.start, self.shape[1], delay, self.metres, period)
         zero = np.mod(-self.metres * delay, period)
         self.live = live_exposure(tags, self.y, np.where(zero < period, zero, 0.0), self.metres)
         self.trials = self.live.trials
