@@ -60,7 +60,7 @@ class PhysicalImage:
     def interval(self, share: float = 0.95) -> tuple[np.ndarray, np.ndarray]:
         """Return the ends of an interval that holds the truth in 68 % or 95 % of pixels (float32 maps).
 
-        Errors have longer tails than a normal law: the wider one is 2.6 times the other. Neither reaches
+        Errors have longer tails than a normal law: the wider one is 2.5 times the other. Neither reaches
         beyond the bounds. share: 0.68 or 0.95. Raises InputError.
         """
         if share not in SHARES:

@@ -37,8 +37,8 @@ UNSURE = 0.3  # of the logarithm of the correlation of neighbours' errors
 FALL = 0.6  # in a 5 x 5 window that correlation is itself to this power less
 ROUGH = 0.1  # relative, how well that holds
 GROWTH = 0.45  # the mean squared error falls with the data to this power
-STANDARD = 0.84  # of u: half the width that holds 68 % of errors
-OF_95 = 2.6  # times that: half the width that holds 95 %
+STANDARD = 0.87  # of u: half the width that holds 68 % of errors
+OF_95 = 2.5  # times that: half the width that holds 95 %
 FEW = 30  # pixels of a kind below which it is not asked
 LEAST = 0.02  # of the mean of an image: taken where it is less, for the information
 
