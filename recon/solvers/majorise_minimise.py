@@ -10,6 +10,7 @@ still be lowered by from x0. It is zero just where x0 is stationary.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator
 
 import numpy as np
@@ -20,9 +21,12 @@ from recon.solvers.contract import State, Unsuitable
 from recon.solvers.primal_dual import PrimalDual
 
 CLOSE_ENOUGH = 0.2  # an inner solve ends when its gap is this share of what the majorant could be lowered by
-BETWEEN_CHECKS = 10  # iterations
+FIRST_CHECK = 10  # iterations
+SPREAD = 1.4  # iterations of a check over those of the last one: a certificate can cost as much as 40
 ENOUGH = 300  # iterations of an inner solve that has lowered the objective
-LONGEST = 2000  # iterations of one that has not
+LONGEST = 1000  # iterations of one that has not
+STEADIER = 50.0  # times the step, for a bound that rounding keeps low
+PATIENCE = 6000  # iterations for such a bound
 
 
 def majorise_minimise(problem: Problem, start: np.ndarray, tolerance: float) -> Iterator[State]:
@@ -48,10 +52,12 @@ def majorise_minimise(problem: Problem, start: np.ndarray, tolerance: float) -> 
         best = before.objective - max(before.dual_value, state.dual_value)
         gap = relative_gap(objective, objective - best, image.size)
         if not lowered and gap > tolerance:
-            # Duals and a step that have come from other majorants may be far from this one's.
+            # The image is as good as the bound can tell. Duals that have come from other majorants may be far
+            # from this one's, and short steps of the image, which are long ones of the duals, multiply its
+            # rounding: where a pixel has no data the bound pays for that with the whole width of the box.
             blocks = [prior.block(problem.shape) for prior in problem.priors]
-            run = PrimalDual(run.problem, image, blocks)
-            state, lowered = _minimise(run, before.objective, objective, tolerance)
+            run = PrimalDual(run.problem, image, blocks, STEADIER * run.step, correction=0.0)
+            state, lowered = _minimise(run, before.objective, objective, tolerance, PATIENCE)
             iterations += run.iteration
             best = min(best, before.objective - state.dual_value)
             gap = relative_gap(objective, objective - best, image.size)
@@ -65,11 +71,15 @@ def majorise_minimise(problem: Problem, start: np.ndarray, tolerance: float) -> 
         yield State(iterations, image, objective, objective - best, gap, ended)
 
 
-def _minimise(run: PrimalDual, start: float, true_start: float, tolerance: float) -> tuple[State, bool]:
+def _minimise(
+    run: PrimalDual, start: float, true_start: float, tolerance: float, longest: int = LONGEST
+) -> tuple[State, bool]:
     """Solve the convex problem closely enough; return the state and whether it is below the start."""
+    due = FIRST_CHECK
     while True:
-        for _ in range(BETWEEN_CHECKS):
+        while run.iteration < due:
             run.advance()
+        due = math.ceil(SPREAD * due)
         state = run.measure()
         left = state.objective - state.dual_value
         possible = start - state.dual_value
@@ -78,5 +88,5 @@ def _minimise(run: PrimalDual, start: float, true_start: float, tolerance: float
         lowered = state.objective <= start
         if lowered and run.iteration >= ENOUGH:
             return state, True
-        if possible <= 0.5 * tolerance * abs(true_start) or run.iteration >= LONGEST:
+        if possible <= 0.5 * tolerance * abs(true_start) or run.iteration >= longest:
             return state, lowered

@@ -28,6 +28,7 @@ from recon.solvers.contract import State, Unsuitable
 
 RELAXATION = 1.9
 WINDOW = 20  # iterations between corrections of the balance
+CORRECTION = 0.5  # power of the first correction; 0 keeps the step
 FADING = 0.8  # each correction is this much weaker than the one before
 ROUNDING = 1e-5  # a gap below this that no longer falls has met single precision
 FIRST_STEP = 0.05  # tau times the mean Fisher information, at the start
@@ -72,6 +73,7 @@ class PrimalDual:
         start: np.ndarray,
         blocks: Sequence[Block] | None = None,
         step: float | None = None,
+        correction: float = CORRECTION,
     ) -> None:
         likelihood = problem.likelihood
         if not likelihood.convex:
@@ -94,7 +96,7 @@ class PrimalDual:
         self._ahead = np.empty(problem.shape, np.float32)
         self._scratch = np.empty(problem.shape, np.float32)
         self._marked: np.ndarray | None = None
-        self._correction = 0.5
+        self._correction = correction
         if blocks is not None:  # K' y of duals that are not zero
             self._certify(self._adjoint)
 

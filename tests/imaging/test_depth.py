@@ -162,17 +162,17 @@ def test_a_callback_can_stop():
 def test_generalized_variation_converges(seed):
     scene = slopes()[::4, ::4]
     tags = acquire(scene, seed, signal=1.0, background=1.0)
-    result = depth(tags, np.ones(scene.shape), effort=Effort(weight="rule"))
+    result = depth(tags, np.ones(scene.shape))
     assert result.status is Status.CONVERGED
     assert result.diagnostics.relative_gap <= 1e-2
 
 
-@pytest.mark.xfail(strict=True, reason="ends NOT_MONOTONE at a gap of 0.009 after 16 600 iterations")
-@pytest.mark.parametrize("seed", [0])
+@pytest.mark.parametrize("seed", SEEDS)
 def test_generalized_variation_converges_closely(seed):
     scene = slopes()[::4, ::4]
     tags = acquire(scene, seed, signal=1.0, background=1.0)
-    assert depth(tags, np.ones(scene.shape), effort=Effort(1e-3)).status is Status.CONVERGED
+    effort = Effort(1e-3, weight="rule", judge=False)
+    assert depth(tags, np.ones(scene.shape), effort=effort).status is Status.CONVERGED
 
 
 # Settings
