@@ -18,7 +18,7 @@ import numpy as np
 from recon.diagnostics import Status, relative_gap
 from recon.problem import Problem
 from recon.solvers.contract import State, Unsuitable
-from recon.solvers.primal_dual import PrimalDual
+from recon.solvers.primal_dual import CORRECTION, PrimalDual
 
 CLOSE_ENOUGH = 0.2  # an inner solve ends when its gap is this share of what the majorant could be lowered by
 FIRST_CHECK = 10  # iterations
@@ -43,7 +43,8 @@ def majorise_minimise(problem: Problem, start: np.ndarray, tolerance: float) -> 
     iterations = 0
     while True:
         majorant = problem.likelihood.majorise(image)
-        run = PrimalDual(Problem(majorant, problem.priors, problem.bounds), image, blocks, step)
+        correction = CORRECTION if step is None else 0.0
+        run = PrimalDual(Problem(majorant, problem.priors, problem.bounds), image, blocks, step, correction)
         before = run.measure()
         scale = likelihood_value - majorant.value(image)  # from the majorant's objective to the true one
         objective = before.objective + scale
