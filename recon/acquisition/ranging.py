@@ -87,10 +87,11 @@ class Ranging:
     def _refuse_more_than_dead_time_allows(self, dead_time: DeadTime) -> None:
         periods = self.period / dead_time.blind
         trials = np.asarray(self.trials, dtype=np.float64)
-        if dead_time.reset_every_period:
-            most = np.ceil(trials) * math.ceil(periods)  # part of a period may record as many as a whole one
-        else:
-            most = np.floor(trials * periods * (1 + ROUNDING)) + 1
+        with np.errstate(over="ignore"):  # no limit, then
+            if dead_time.reset_every_period:  # part of a period may record as many as a whole one
+                most = np.ceil(trials) * math.ceil(periods)
+            else:
+                most = np.floor(trials * periods * (1 + ROUNDING)) + 1
         bad = self._counts.detections > most
         if self.mask is not None:
             bad &= self.mask

@@ -123,3 +123,13 @@ def test_counts_keep_the_trials():
     settings = {"shape": (1, 1), "trials": 9, "background": 0.5, **SETTINGS}
     counts = TimeTags([0], [0], [0], dead_time=DeadTime(50e-9), **settings).counts()
     assert (counts.trials, counts.background, counts.several_per_trial) == (9, 0.5, True)
+
+
+@pytest.mark.parametrize("reset", [False, True])
+def test_more_trials_than_numbers_reach_allow_any_number_of_detections(reset):
+    dead_time = recon.DeadTime(0.9, reset_every_period=reset)
+    tags = recon.TimeTags(
+        [0, 0], [0, 0], [0.0, 0.0], shape=(1, 1), trials=1.7e308, period=2.0,
+        pulse=recon.GaussianPulse(0.01), dead_time=dead_time,
+    )  # fmt: skip
+    assert tags.counts().detections.sum() == 2
