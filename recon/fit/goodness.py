@@ -99,9 +99,10 @@ def goodness(
     """Return whether the images and their models explain the data, with the causes of what does not fit.
 
     Tests of numbers (reflectivity and yield), each against data drawn from the image and fitted again:
-        dispersion (`recon.fit.dispersion`): too little = pile-up, too much = overdispersion. For the latter
-            the expectation grows by what draws from a rougher image say of structure lost in smoothing
-            (`recon.fit.refits`), extrapolated to one and a half steps;
+        dispersion (`recon.fit.dispersion`): too little = pile-up, too much = overdispersion. The latter is
+            asked at twice the weights, where less of the noise is fitted, and the expectation grows by what
+            draws say of structure lost in smoothing (`recon.fit.refits`): in a scene of fine texture little
+            can be told, and how much must be is said;
         lone bright pixels, their number and the least likely one (`recon.fit.tails`) = hot pixels;
         held-out scores at a quarter of the weights and at four times them (`recon.fit.weight`), unless
             held-out data chose them.
@@ -114,7 +115,7 @@ def goodness(
     pixels in a thousand, 15 % of the pulse's width, 1 % of drift.
 
     result: what `recon.reconstruct` returned. seed: of the draws. callback: called with the name of the image
-    and the share of its simulations that is done. Takes about twenty solves of each image.
+    and the share of its simulations that is done. Takes about twenty-five solves of each image.
 
     Raises InputError.
     """
@@ -137,7 +138,7 @@ def _number_fit(
     likelihood = image.problem.likelihood
     lone = lone_pixels(likelihood, image.image)
     findings = [] if image.status is Status.CONVERGED else [words.not_converged(image)]
-    enough = _enough(image)
+    enough, least = _enough(image), None
     residuals = quantile_residuals(likelihood, image.image, seed)
     statistics: list[Statistic] = []
     weighed = image.choice is not None and image.choice.folds > 0
@@ -150,9 +151,8 @@ def _number_fit(
             if test is not None:
                 statistics += test.statistics
                 findings += [words.wrong_weight(one, test.better) for one in test.statistics if one.denies]
-        told_of, causes = judged_numbers(
-            image, seed, told, findings, OVER_OF_FRAMES if isinstance(acquisition, Frames) else OVER
-        )
+        chance = OVER_OF_FRAMES if isinstance(acquisition, Frames) else OVER
+        told_of, causes, least = judged_numbers(image, seed, told, findings, chance)
         statistics += told_of
         findings += causes
         if isinstance(acquisition, Frames):
@@ -166,7 +166,7 @@ def _number_fit(
                 findings += [words.drift(trend)] if statistics[-1].denies else []
     return ImageFit(
         name, residuals, histogram(residuals), lone, tuple(statistics), tuple(findings),
-        tuple(words.unidentified(acquisition, name, weighed)), enough,
+        tuple(words.unidentified(acquisition, name, weighed, least)), enough,
     )  # fmt: skip
 
 

@@ -2,9 +2,10 @@
 
 A fit takes part of the noise for image, so residuals scatter less than the law says; how much less, the
 degrees of freedom, only refitting tells (the parametric bootstrap of Efron 1979). An image that was smoothed
-has lost structure, though, and data drawn from it lose less when they are smoothed again. A second set of
-draws, from a rougher image, fitted to the real data with 0.7 times the weights, shows how the dispersion
-changes with the structure there is to lose.
+has lost structure, though, and data drawn from it lose less when they are smoothed again. How much a scene
+has to lose is seen from two pairs of draws that are fitted alike: from the image and from a rougher one,
+fitted to the real data with 0.7 times the weights; and from the image and from a smoother one, with twice
+the weights, both fitted with twice the weights.
 """
 
 from __future__ import annotations
@@ -25,9 +26,9 @@ from recon.problem import Problem
 from recon.solvers import solve
 from recon.weights.scoring import FLOOR
 
-DRAWS = 5  # of each kind
+DRAWS = 4  # of each kind
 LONE_DRAWS = 2  # for the number of lone pixels, which is nearly Poisson
-ROUGHER = 0.7  # of the weights
+ROUGHER, SMOOTHER = 0.7, 2.0  # times the weights
 TOLERANCE = 1e-3
 
 
@@ -48,37 +49,34 @@ class Summary:
 
 
 @dataclass(frozen=True, eq=False)
-class Refits:
-    """Summaries of draws: from the image and from a rougher one.
+class Drawn:
+    """Draws from one image, each fitted again: summaries at the fits, and at the image they come from."""
 
-    known_plain, known_rough: of the same draws, at the image they were drawn from, where the mean of the
-    dispersion is known to be 1. lone: numbers of lone bright pixels of draws from the image without peaks of
-    a single pixel, which may be what hot pixels left in it.
-    """
-
-    plain: list[Summary]
-    rough: list[Summary]
-    known_plain: list[Summary]
-    known_rough: list[Summary]
-    lone: list[float]
+    fits: list[Summary]
+    known: list[Summary]
 
     def offset(self) -> tuple[float, float]:
         """Return what fitting does to the dispersion, and the standard error of that."""
-        return _difference(self.plain, self.known_plain)
-
-    def rough_offset(self) -> tuple[float, float]:
-        """The same of data drawn from the rougher image."""
-        return _difference(self.rough, self.known_rough)
-
-    @property
-    def trimmed(self) -> float:
-        """The trimmed dispersion that is expected."""
-        return float(np.mean([s.trimmed for s in self.plain]))
+        values = [fit.dispersion - one.dispersion for fit, one in zip(self.fits, self.known, strict=True)]
+        return float(np.mean(values)), float(np.std(values, ddof=1) / np.sqrt(len(values)))
 
 
-def _difference(fits: list[Summary], known: list[Summary]) -> tuple[float, float]:
-    values = [fit.dispersion - one.dispersion for fit, one in zip(fits, known, strict=True)]
-    return float(np.mean(values)), float(np.std(values, ddof=1) / np.sqrt(len(values)))
+@dataclass(frozen=True, eq=False)
+class Refits:
+    """Summaries of draws.
+
+    plain: from the image. rough: from the rougher image. heavy: those of plain, fitted with `SMOOTHER` times
+    the weights. smooth: from the image so fitted, with as much. observed_heavy: the real data at that image.
+    lone: numbers of lone bright pixels of draws from the image without peaks of a single pixel, which may be
+    what hot pixels left in it.
+    """
+
+    plain: Drawn
+    rough: Drawn
+    heavy: Drawn
+    smooth: Drawn
+    observed_heavy: Summary
+    lone: list[float]
 
 
 def standard_residuals(likelihood: Likelihood, law: CountLaw | None, x: np.ndarray) -> np.ndarray:
@@ -118,24 +116,39 @@ def fitted(image: PhysicalImage, likelihood: Likelihood, factor: float, start: n
 
 
 def refits(image: PhysicalImage, seed: int, callback: Callable[[float], object] | None = None) -> Refits:
-    """Draw from the image and from a rougher one, and fit each draw.
+    """Draw from the image, a rougher one and a smoother one, and fit each draw.
 
     callback: called with the share that is done.
     """
-    likelihood = image.problem.likelihood
-    rough = fitted(image, likelihood, ROUGHER, image.image)
-    found: list[tuple[list[Summary], list[Summary]]] = []
-    kinds = ((image.image, DRAWS), (rough, DRAWS), (without_peaks(image.image), LONE_DRAWS))
-    for kind, (truth, number) in enumerate(kinds):
+    likelihood, done, fits_to_make = image.problem.likelihood, 0, 4 * DRAWS + LONE_DRAWS
+
+    def summaries(drawn: list[Likelihood], factor: float, start: np.ndarray) -> list[Summary]:
+        nonlocal done
+        found = []
+        for one in drawn:
+            found.append(summary(one, fitted(image, one, factor, start)))
+            done += 1
+            if callback is not None:
+                callback(done / fits_to_make)
+        return found
+
+    def draws(kind: int, truth: np.ndarray, number: int = DRAWS) -> tuple[list[Likelihood], list[Summary]]:
         # a pixel that waits for what never comes waits for ever
         truth = np.maximum(truth, max(FLOOR * float(truth.mean()), image.bounds[0]))
-        fits, known = [], []
-        for b in range(number):
-            drawn = likelihood.draw(truth, np.random.default_rng((seed, kind, b)))
-            known.append(summary(drawn, truth))
-            fits.append(summary(drawn, fitted(image, drawn, 1.0, image.image)))
-            if callback is not None:
-                callback((kind * DRAWS + b + 1.0) / (2.0 * DRAWS + LONE_DRAWS))
-        found.append((fits, known))
-    (plain, known_plain), (rougher, known_rough), (smooth, _) = found
-    return Refits(plain, rougher, known_plain, known_rough, [s.lone for s in smooth])
+        drawn = [likelihood.draw(truth, np.random.default_rng((seed, kind, b))) for b in range(number)]
+        return drawn, [summary(one, truth) for one in drawn]
+
+    x = image.image
+    rougher, smoother = (fitted(image, likelihood, factor, x) for factor in (ROUGHER, SMOOTHER))
+    plain, known = draws(0, x)
+    rough, known_rough = draws(1, rougher)
+    smooth, known_smooth = draws(2, smoother)
+    even, _ = draws(3, without_peaks(x), LONE_DRAWS)
+    return Refits(
+        plain=Drawn(summaries(plain, 1.0, x), known),
+        rough=Drawn(summaries(rough, 1.0, x), known_rough),
+        heavy=Drawn(summaries(plain, SMOOTHER, smoother), known),
+        smooth=Drawn(summaries(smooth, SMOOTHER, smoother), known_smooth),
+        observed_heavy=summary(likelihood, smoother),
+        lone=[one.lone for one in summaries(even, 1.0, x)],
+    )

@@ -125,9 +125,16 @@ def drift(trend: YieldTrend) -> Finding:
 
 
 def unidentified(
-    acquisition: Counts | TimeTags | TimeHistogram | Frames, name: str, weighed: bool
+    acquisition: Counts | TimeTags | TimeHistogram | Frames,
+    name: str,
+    weighed: bool,
+    overdispersion: float | None = None,
 ) -> Iterator[str]:
-    """Yield what these data cannot tell, whatever the tests say; weighed: whether the weight was tested."""
+    """Yield what these data cannot tell, whatever the tests say.
+
+    weighed: whether the weight was tested. overdispersion: the least that could be told, a share of the law's
+    variance.
+    """
     if isinstance(acquisition, Frames):
         if acquisition.frames == 1:
             yield "dose against yield: one frame tells their product, and hardly their ratio"
@@ -147,6 +154,9 @@ def unidentified(
         yield "gain against reflectivity: tags tell their product"
         yield "background that arrives with the pulse, such as scattered light, against reflectivity"
     if name != "depth":
-        yield "overdispersion against texture finer than a pixel: both make lone pixels differ"
+        said = "overdispersion against texture finer than a pixel: both make lone pixels differ"
+        if overdispersion is not None:
+            said += f"; here, of less than {100.0 * overdispersion:.0f} % of the law's variance"
+        yield said
     if not weighed:
         yield "the weight of the prior: no data were held out to test it"
