@@ -40,6 +40,7 @@ class ImageFit:
     statistics: every number that was looked at. findings: what does not fit; often none.
     unidentified: sentences on what these data cannot tell, whatever the tests say.
     enough: whether there are data enough to say anything.
+    least_overdispersion: the least that could be told, a share of the law's variance; None where not asked.
     """
 
     name: str
@@ -50,6 +51,7 @@ class ImageFit:
     findings: tuple[Finding, ...]
     unidentified: tuple[str, ...]
     enough: bool
+    least_overdispersion: float | None = None
 
     @property
     def verdict(self) -> str:
@@ -166,7 +168,7 @@ def _number_fit(
                 findings += [words.drift(trend)] if statistics[-1].denies else []
     return ImageFit(
         name, residuals, histogram(residuals), lone, tuple(statistics), tuple(findings),
-        tuple(words.unidentified(acquisition, name, weighed, least)), enough,
+        tuple(words.unidentified(acquisition, name, weighed, least)), enough, least,
     )  # fmt: skip
 
 

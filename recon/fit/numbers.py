@@ -19,7 +19,7 @@ from recon.imaging.image import PhysicalImage
 from recon.likelihoods.contract import Likelihood
 from recon.likelihoods.poisson import Poisson
 
-OVER, UNDER, LONE, BRIGHTEST = 0.03, 0.003, 0.003, 0.001  # chances of a false alarm
+OVER, UNDER, LONE, BRIGHTEST = 0.03, 0.003, 0.003, 1e-5  # chances of a false alarm
 # Differences that are let pass: of the dispersion if too small and if too large, and of the share of lone
 # bright pixels.
 PASSED, PASSED_OVER, PASSED_LONE = 0.02, 0.01, 3e-3

@@ -22,6 +22,7 @@ def fit_record(fit: ImageFit) -> dict[str, Any]:
         "enough": fit.enough,
         "findings": [vars(finding).copy() for finding in fit.findings],
         "unidentified": list(fit.unidentified),
+        "least_overdispersion": fit.least_overdispersion,
         "statistics": [_statistic_record(statistic) for statistic in fit.statistics],
         "lone_pixels": int(fit.lone.sum()),
         "histogram": None if histogram is None else {k: v.tolist() for k, v in vars(histogram).items()},

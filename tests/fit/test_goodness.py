@@ -183,3 +183,19 @@ def test_progress_and_seeds():
     again, other = goodness(result), goodness(result, seed=1)
     assert one.images["reflectivity"].statistics == again.images["reflectivity"].statistics
     assert one.images["reflectivity"].statistics != other.images["reflectivity"].statistics
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+def test_overdispersion_that_texture_hides_is_said(seed):
+    """A photograph at ten counts a pixel, right: not denied, and said that 5 % could not be told."""
+    from skimage import data
+
+    photograph = data.camera().astype(float)[:256, :256].reshape(128, 2, 128, 2).mean(axis=(1, 3))
+    counts = np.random.default_rng(seed).poisson(10.0 * photograph / photograph.mean())
+    found = goodness(recon.reconstruct(several(counts)))
+    assert found.fits
+    fit = found.images["reflectivity"]
+    assert fit.least_overdispersion > 0.07
+    assert f"of less than {100 * fit.least_overdispersion:.0f} % of the law's variance" in found.verdict
+    flat = goodness(recon.reconstruct(several(np.random.default_rng(seed).poisson(10.0 * SCENE))))
+    assert flat.images["reflectivity"].least_overdispersion < 0.06
