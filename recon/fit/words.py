@@ -51,8 +51,8 @@ def overdispersion(index: Statistic) -> Finding:
         "overdispersion",
         f"detections scatter by {more:.1f} % more than their law and smoothing explain: variance over its"
         f" expectation {index.observed:.3f}, {index.expected:.3f} +- {index.standard_deviation:.3f} expected",
-        "look for afterpulses, a source that fluctuates, or a gain that differs from pixel to pixel; texture of"
-        " single pixels, which the prior smooths away, scatters alike",
+        "look for afterpulses, a source that fluctuates, or a gain that differs from pixel to pixel; texture"
+        " of single pixels, which the prior smooths away, scatters alike",
     )
 
 
