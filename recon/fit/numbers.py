@@ -11,10 +11,10 @@ from scipy.stats import norm, t
 from recon.fit import words
 from recon.fit.count_laws import CountLaw, count_law
 from recon.fit.dispersion import dispersion_deviation
-from recon.fit.refits import Refits, Summary, refits, summary
+from recon.fit.refits import Refits, Summary, refits, summary, trimmed
 from recon.fit.statistic import Finding, Statistic, normal_statistic, simulated_statistic
 from recon.fit.structure import NAMES
-from recon.fit.tails import Brightest, brightest_lone
+from recon.fit.tails import Brightest, brightest_lone, lone_pixels
 from recon.imaging.image import PhysicalImage
 from recon.likelihoods.contract import Likelihood
 from recon.likelihoods.poisson import Poisson
@@ -52,19 +52,19 @@ def judged_numbers(
         statistics.append(simulated_statistic(name, observed.structure[k], sample))
     index = _index_law(law, likelihood, drawn)
     under = _too_little(index, observed, drawn)
-    over, least = _too_much(index, observed, drawn, alarm)
+    heavy = summary(likelihood, drawn.smoother)
+    over, least = _too_much(index, observed, heavy, drawn, alarm)
     statistics += [under, over]
     hot = False
     if law is not None:
         brightest = brightest_lone(likelihood, image.image)
-        lone = [_lone_statistic(observed, drawn, int(np.count_nonzero(likelihood.has_data)))]
+        lone = [_lone_statistic(image, drawn)]
         if brightest is not None:
             lone.append(_brightest_statistic(brightest))
         statistics += lone
         # a law that is too narrow has lone bright pixels, too, but all others scatter as well
-        left = drawn.observed_heavy.trimmed - float(np.mean([s.trimmed for s in drawn.heavy.fits]))
         hot = any(one.denies for one in lone) and not (
-            over.denies and left > ALL_SCATTER * (over.observed - over.expected)
+            over.denies and _left(likelihood, drawn) > ALL_SCATTER * (over.observed - over.expected)
         )
     # noise left in the image is missing in the residuals, structure lost from it is added to them
     rough, smoothed = (any(f.cause == f"weight too {how}" for f in before) for how in ("small", "large"))
@@ -76,12 +76,19 @@ def judged_numbers(
     return statistics, findings, least
 
 
-def _lone_statistic(observed: Summary, drawn: Refits, pixels: int) -> Statistic:
+def _left(likelihood: Likelihood, drawn: Refits) -> float:
+    """Return the excess of dispersion at the smoother image that is left without lone bright pixels."""
+    return trimmed(likelihood, drawn.smoother) - float(np.mean([trimmed(*one) for one in drawn.heavy_fits]))
+
+
+def _lone_statistic(image: PhysicalImage, drawn: Refits) -> Statistic:
     """Return the number of lone bright pixels; they are nearly Poisson."""
+    likelihood = image.problem.likelihood
+    observed = float(lone_pixels(likelihood, image.image).sum())
     number, expected = len(drawn.lone), float(np.mean(drawn.lone))
     deviation = float(np.sqrt(max(expected, 1.0) * (1.0 + 1.0 / number)))
-    found = normal_statistic("lone bright pixels", observed.lone, expected, deviation, 1, LONE)
-    few = observed.lone - expected < max(PASSED_LONE * pixels, 3.0)
+    found = normal_statistic("lone bright pixels", observed, expected, deviation, 1, LONE)
+    few = observed - expected < max(PASSED_LONE * np.count_nonzero(likelihood.has_data), 3.0)
     return replace(found, p_value=1.0) if few else found
 
 
@@ -121,7 +128,9 @@ def _too_little(law: _IndexLaw, observed: Summary, drawn: Refits) -> Statistic:
     return Statistic("dispersion", observed.dispersion, expected, deviation, p_value, UNDER)
 
 
-def _too_much(law: _IndexLaw, observed: Summary, drawn: Refits, alarm: float) -> tuple[Statistic, float]:
+def _too_much(
+    law: _IndexLaw, observed: Summary, observed_heavy: Summary, drawn: Refits, alarm: float
+) -> tuple[Statistic, float]:
     """Return the dispersion at the smoother image, beyond lost structure, and what excess would be too much.
 
     That image takes less of the noise, but more structure is missing from it; at the image itself it is the
@@ -137,7 +146,7 @@ def _too_much(law: _IndexLaw, observed: Summary, drawn: Refits, alarm: float) ->
     )
     lost = LOST * max(heavy - smooth, 0.0)
     deviation = float(np.hypot(law.deviation, np.hypot((1.0 + LOST) * heavy_error, LOST * smooth_error)))
-    index, expected = drawn.observed_heavy.dispersion, law.mean + heavy + lost
+    index, expected = observed_heavy.dispersion, law.mean + heavy + lost
     p_value = max(law.chance(index - expected, deviation), near / LENIENT)
     if index - expected < PASSED_OVER:
         p_value = 1.0

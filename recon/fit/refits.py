@@ -36,16 +36,13 @@ TOLERANCE = 1e-3
 class Summary:
     """The statistics of one data set and its fit.
 
-    dispersion: NaN without a law in closed form. deviance: twice the likelihood's value. structure: see
-    `recon.fit.structure`. lone: number of lone bright pixels. trimmed: the dispersion of what is not rather
-    bright and lone.
+    dispersion: of squared residuals where the law has no closed form. deviance: twice the likelihood's value.
+    structure: see `recon.fit.structure`.
     """
 
     dispersion: float
     deviance: float
     structure: np.ndarray
-    lone: float
-    trimmed: float
 
 
 @dataclass(frozen=True, eq=False)
@@ -66,16 +63,17 @@ class Refits:
     """Summaries of draws.
 
     plain: from the image. rough: from the rougher image. heavy: those of plain, fitted with `SMOOTHER` times
-    the weights. smooth: from the image so fitted, with as much. observed_heavy: the real data at that image.
-    lone: numbers of lone bright pixels of draws from the image without peaks of a single pixel, which may be
-    what hot pixels left in it.
+    the weights. smooth: from the image so fitted, with as much. smoother: that image; heavy_fits: the draws
+    of heavy, and their images. lone: numbers of lone bright pixels of draws from the image without peaks of a
+    single pixel, which may be what hot pixels left in it.
     """
 
     plain: Drawn
     rough: Drawn
     heavy: Drawn
     smooth: Drawn
-    observed_heavy: Summary
+    smoother: np.ndarray
+    heavy_fits: list[tuple[Likelihood, np.ndarray]]
     lone: list[float]
 
 
@@ -91,19 +89,22 @@ def standard_residuals(likelihood: Likelihood, law: CountLaw | None, x: np.ndarr
 
 def summary(likelihood: Likelihood, x: np.ndarray) -> Summary:
     """Return the statistics of a likelihood at an image."""
-    shown = likelihood.has_data
     law = count_law(likelihood, x)
-    value = 2.0 * likelihood.value(x)
     found = structure(standard_residuals(likelihood, law, x))
-    lone = float(np.sum(lone_pixels(likelihood, x)))
-    rest = shown & ~lone_pixels(likelihood, x, RATHER_RARE)
+    return Summary(_dispersion(likelihood, law, x, likelihood.has_data), 2.0 * likelihood.value(x), found)
+
+
+def trimmed(likelihood: Likelihood, x: np.ndarray) -> float:
+    """Return the dispersion of what is not rather bright and lone."""
+    rest = likelihood.has_data & ~lone_pixels(likelihood, x, RATHER_RARE)
+    return _dispersion(likelihood, count_law(likelihood, x), x, rest)
+
+
+def _dispersion(likelihood: Likelihood, law: CountLaw | None, x: np.ndarray, shown: np.ndarray) -> float:
     if law is not None and law.has_moments:
-        return Summary(dispersion(law, shown), value, found, lone, dispersion(law, rest))
+        return dispersion(law, shown)
     residuals = likelihood.residuals(x) if law is None else quantile_residuals(likelihood, x)
-    index, trimmed = (
-        float(np.mean(residuals[which] ** 2)) if which.any() else np.nan for which in (shown, rest)
-    )
-    return Summary(index, value, found, lone, trimmed)
+    return float(np.mean(residuals[shown] ** 2)) if shown.any() else np.nan
 
 
 def fitted(image: PhysicalImage, likelihood: Likelihood, factor: float, start: np.ndarray) -> np.ndarray:
@@ -122,15 +123,18 @@ def refits(image: PhysicalImage, seed: int, callback: Callable[[float], object] 
     """
     likelihood, done, fits_to_make = image.problem.likelihood, 0, 4 * DRAWS + LONE_DRAWS
 
-    def summaries(drawn: list[Likelihood], factor: float, start: np.ndarray) -> list[Summary]:
+    def fits(drawn: list[Likelihood], factor: float, start: np.ndarray) -> list[np.ndarray]:
         nonlocal done
         found = []
         for one in drawn:
-            found.append(summary(one, fitted(image, one, factor, start)))
+            found.append(fitted(image, one, factor, start))
             done += 1
             if callback is not None:
                 callback(done / fits_to_make)
         return found
+
+    def summaries(drawn: list[Likelihood], images: list[np.ndarray]) -> list[Summary]:
+        return [summary(one, fit) for one, fit in zip(drawn, images, strict=True)]
 
     def draws(kind: int, truth: np.ndarray, number: int = DRAWS) -> tuple[list[Likelihood], list[Summary]]:
         # a pixel that waits for what never comes waits for ever
@@ -144,11 +148,13 @@ def refits(image: PhysicalImage, seed: int, callback: Callable[[float], object] 
     rough, known_rough = draws(1, rougher)
     smooth, known_smooth = draws(2, smoother)
     even, _ = draws(3, without_peaks(x), LONE_DRAWS)
+    heavy = fits(plain, SMOOTHER, smoother)
     return Refits(
-        plain=Drawn(summaries(plain, 1.0, x), known),
-        rough=Drawn(summaries(rough, 1.0, x), known_rough),
-        heavy=Drawn(summaries(plain, SMOOTHER, smoother), known),
-        smooth=Drawn(summaries(smooth, SMOOTHER, smoother), known_smooth),
-        observed_heavy=summary(likelihood, smoother),
-        lone=[one.lone for one in summaries(even, 1.0, x)],
+        plain=Drawn(summaries(plain, fits(plain, 1.0, x)), known),
+        rough=Drawn(summaries(rough, fits(rough, 1.0, x)), known_rough),
+        heavy=Drawn(summaries(plain, heavy), known),
+        smooth=Drawn(summaries(smooth, fits(smooth, SMOOTHER, smoother)), known_smooth),
+        smoother=smoother,
+        heavy_fits=list(zip(plain, heavy, strict=True)),
+        lone=[float(lone_pixels(*one).sum()) for one in zip(even, fits(even, 1.0, x), strict=True)],
     )
