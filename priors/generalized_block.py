@@ -12,7 +12,7 @@ from priors import generalized_kernels as kernels
 from priors.difference_kernels import squared_distance
 from priors.kernels import bands
 
-RETREATS = 40  # steps of `certify`
+RETREATS = 16  # steps of `certify`
 
 if TYPE_CHECKING:
     from priors.generalized_variation import GeneralizedVariation

@@ -22,7 +22,7 @@ from recon.solvers.primal_dual import CORRECTION, PrimalDual
 
 CLOSE_ENOUGH = 0.2  # an inner solve ends when its gap is this share of what the majorant could be lowered by
 FIRST_CHECK = 10  # iterations
-SPREAD = 1.4  # iterations of a check over those of the last one: a certificate can cost as much as 40
+SPREAD = 1.4  # iterations of a check over those of the last one: a certificate can cost as much as 20
 ENOUGH = 300  # iterations of an inner solve that has lowered the objective
 LONGEST = 1000  # iterations of one that has not
 STEADIER = 50.0  # times the step, for a bound that rounding keeps low
