@@ -1,7 +1,7 @@
 """Compiling kernels beside other work.
 
-The first run after installing compiles every kernel it needs, on one core. What a later acquisition needs
-is compiled by a second process meanwhile, into the cache on disk that both share.
+The first run after installing compiles every kernel it needs, on one core. A second process compiles
+meanwhile, into the cache on disk that both share, beginning at the end.
 """
 
 from __future__ import annotations
@@ -11,20 +11,28 @@ import sys
 from collections.abc import Iterator
 from contextlib import contextmanager
 
-# In the order in which the demo comes to need them, less what it begins with itself.
+# What the demo comes to need last, first: the two processes meet half way and repeat next to nothing.
 _LATER = """
 import numpy as np
+import priors
 import recon
-from recon.imaging.depth import depth_belief
-flat = np.full((16, 16), 2.0)
-tags = recon.simulate.time_tags(flat, flat, 10, 1e-7, recon.GaussianPulse(3e-10), 0.05, 0.05, seed=0)
-times = recon.likelihoods.DetectionTimes(tags, flat.astype(np.float32))
-start = depth_belief(times).depth
-times.value(start), times.fisher_information(start), times.majorise(start), times.signal_tags(start)
-times.gated(start, 0.2)
-frames = recon.simulate.frames(flat, 0.125, 30, seed=0)
+flat = np.full((16, 16), 2.0, np.float32)
+frames = recon.Frames(np.random.default_rng(0).poisson(0.3, (30, 16, 16)), 0.125)
 marks = recon.likelihoods.PoissonMarks(frames)
-marks.majorise(marks.estimate()), marks.value(marks.estimate())
+marks.majorise(marks.estimate()), marks.value(marks.estimate()), marks.fisher_information(flat)
+readings = recon.likelihoods.Gaussian(flat, 1.0)
+recon.solve(recon.Problem(readings, priors.GeneralizedVariation(1.0), (0.0, 4.0)), max_iterations=50)
+row, column = (place.ravel() for place in np.mgrid[:16, :16])
+pulse = recon.GaussianPulse(3e-10)
+tags = recon.TimeTags(
+    row, column, np.full(256, 1e-8), shape=(16, 16), trials=10, period=1e-7, pulse=pulse,
+    gain=0.05, background=0.05,
+)
+times = recon.likelihoods.DetectionTimes(tags, flat)
+times.gated(flat, 0.2), times.signal_tags(flat), times.majorise(flat), times.value(flat)
+times.fisher_information(flat)
+from recon.imaging.depth import depth_belief
+depth_belief(times)
 recon.reconstruct(frames)
 """
 
