@@ -11,7 +11,7 @@ import sys
 from collections.abc import Iterator
 from contextlib import contextmanager
 
-# What the demo comes to need last, first: the two processes meet half way and repeat next to nothing.
+# What the demo comes to need last, first: two processes that went the same way would compile the same.
 _LATER = """
 import numpy as np
 import priors

@@ -103,8 +103,8 @@ def goodness(
     Tests of numbers (reflectivity and yield), each against data drawn from the image and fitted again:
         dispersion (`recon.fit.dispersion`): too little = pile-up, too much = overdispersion. The latter is
             asked at twice the weights, where less of the noise is fitted, and the expectation grows by what
-            draws say of structure lost in smoothing (`recon.fit.refits`): in a scene of fine texture little
-            can be told, and how much must be is said;
+            draws say of structure lost in smoothing (`recon.fit.refits`): in a scene of fine texture
+            little can be told, and from how much on is said;
         lone bright pixels, their number and the least likely one (`recon.fit.tails`) = hot pixels;
         held-out scores at a quarter of the weights and at four times them (`recon.fit.weight`), unless
             held-out data chose them.
@@ -113,8 +113,8 @@ def goodness(
 
     The deviance and the autocorrelation of residuals are told beside, and deny nothing: an image at its best
     weight has lost some structure, too. The chances of a false alarm of all tests of an acquisition add up
-    to less than 5 % (Bonferroni). Differences too small to matter are let pass: 2 % of dispersion, three lone
-    pixels in a thousand, 15 % of the pulse's width, 1 % of drift.
+    to less than 5 % (Bonferroni). Differences too small to matter are let pass: 2 % of dispersion too little and
+    1 % too much, three lone pixels in a thousand, 15 % of the pulse's width, 1 % of drift.
 
     result: what `recon.reconstruct` returned. seed: of the draws. callback: called with the name of the image
     and the share of its simulations that is done. Takes about twenty-five solves of each image.
@@ -154,7 +154,7 @@ def _number_fit(
                 statistics += test.statistics
                 findings += [words.wrong_weight(one, test.better) for one in test.statistics if one.denies]
         chance = OVER_OF_FRAMES if isinstance(acquisition, Frames) else OVER
-        told_of, causes, least = judged_numbers(image, seed, told, findings, chance)
+        told_of, causes, least = judged_numbers(image, lone, seed, told, findings, chance)
         statistics += told_of
         findings += causes
         if isinstance(acquisition, Frames):

@@ -14,7 +14,7 @@ from recon.fit.dispersion import dispersion_deviation
 from recon.fit.refits import Refits, Summary, refits, summary, trimmed
 from recon.fit.statistic import Finding, Statistic, normal_statistic, simulated_statistic
 from recon.fit.structure import NAMES
-from recon.fit.tails import Brightest, brightest_lone, lone_pixels
+from recon.fit.tails import Brightest, brightest_lone
 from recon.imaging.image import PhysicalImage
 from recon.likelihoods.contract import Likelihood
 from recon.likelihoods.poisson import Poisson
@@ -30,6 +30,7 @@ ALL_SCATTER = 0.5  # share of an excess of dispersion that is left without brigh
 
 def judged_numbers(
     image: PhysicalImage,
+    lone: np.ndarray,
     seed: int,
     told: Callable[[float], object],
     before: list[Finding],
@@ -37,8 +38,8 @@ def judged_numbers(
 ) -> tuple[list[Statistic], list[Finding], float]:
     """Return what the numbers themselves say, what of it does not fit, and the least overdispersion told.
 
-    told: called with the share of the draws that is done. before: what the weight's test found. alarm: the
-    chance of a false alarm of overdispersion.
+    lone: map of lone bright pixels. told: called with the share of the draws that is done. before: what the
+    weight's test found. alarm: the chance of a false alarm of overdispersion.
     """
     likelihood = image.problem.likelihood
     law = count_law(likelihood, image.image)
@@ -57,18 +58,18 @@ def judged_numbers(
     statistics += [under, over]
     hot = False
     if law is not None:
-        brightest = brightest_lone(likelihood, image.image)
-        lone = [_lone_statistic(image, drawn)]
+        brightest = brightest_lone(likelihood, image.image, lone)
+        bright = [_lone_statistic(float(lone.sum()), int(np.count_nonzero(likelihood.has_data)), drawn)]
         if brightest is not None:
-            lone.append(_brightest_statistic(brightest))
-        statistics += lone
+            bright.append(_brightest_statistic(brightest))
+        statistics += bright
         # a law that is too narrow has lone bright pixels, too, but all others scatter as well
-        hot = any(one.denies for one in lone) and not (
+        hot = any(one.denies for one in bright) and not (
             over.denies and _left(likelihood, drawn) > ALL_SCATTER * (over.observed - over.expected)
         )
     # noise left in the image is missing in the residuals, structure lost from it is added to them
     rough, smoothed = (any(f.cause == f"weight too {how}" for f in before) for how in ("small", "large"))
-    findings = [words.hot_pixels(lone[0], brightest)] if hot else []
+    findings = [words.hot_pixels(bright[0], brightest)] if hot else []
     if under.denies and not rough:
         findings.append(words.pile_up(under, isinstance(likelihood, Poisson)))
     elif over.denies and not smoothed and not hot:
@@ -81,14 +82,12 @@ def _left(likelihood: Likelihood, drawn: Refits) -> float:
     return trimmed(likelihood, drawn.smoother) - float(np.mean([trimmed(*one) for one in drawn.heavy_fits]))
 
 
-def _lone_statistic(image: PhysicalImage, drawn: Refits) -> Statistic:
+def _lone_statistic(observed: float, pixels: int, drawn: Refits) -> Statistic:
     """Return the number of lone bright pixels; they are nearly Poisson."""
-    likelihood = image.problem.likelihood
-    observed = float(lone_pixels(likelihood, image.image).sum())
     number, expected = len(drawn.lone), float(np.mean(drawn.lone))
     deviation = float(np.sqrt(max(expected, 1.0) * (1.0 + 1.0 / number)))
     found = normal_statistic("lone bright pixels", observed, expected, deviation, 1, LONE)
-    few = observed - expected < max(PASSED_LONE * np.count_nonzero(likelihood.has_data), 3.0)
+    few = observed - expected < max(PASSED_LONE * pixels, 3.0)
     return replace(found, p_value=1.0) if few else found
 
 

@@ -136,18 +136,23 @@ def refits(image: PhysicalImage, seed: int, callback: Callable[[float], object] 
     def summaries(drawn: list[Likelihood], images: list[np.ndarray]) -> list[Summary]:
         return [summary(one, fit) for one, fit in zip(drawn, images, strict=True)]
 
-    def draws(kind: int, truth: np.ndarray, number: int = DRAWS) -> tuple[list[Likelihood], list[Summary]]:
-        # a pixel that waits for what never comes waits for ever
-        truth = np.maximum(truth, max(FLOOR * float(truth.mean()), image.bounds[0]))
-        drawn = [likelihood.draw(truth, np.random.default_rng((seed, kind, b))) for b in range(number)]
-        return drawn, [summary(one, truth) for one in drawn]
+    def draws(kind: int, number: int) -> list[Likelihood]:
+        rngs = (np.random.default_rng((seed, kind, b)) for b in range(number))
+        return [likelihood.draw(truths[kind], rng) for rng in rngs]
 
-    x = image.image
+    x, low = image.image, image.bounds[0]
     rougher, smoother = (fitted(image, likelihood, factor, x) for factor in (ROUGHER, SMOOTHER))
-    plain, known = draws(0, x)
-    rough, known_rough = draws(1, rougher)
-    smooth, known_smooth = draws(2, smoother)
-    even, _ = draws(3, without_peaks(x), LONE_DRAWS)
+    # a pixel that waits for what never comes waits for ever
+    truths = [
+        np.maximum(truth, max(FLOOR * float(truth.mean()), low))
+        for truth in (x, rougher, smoother, without_peaks(x))
+    ]
+    plain, rough, smooth = (draws(kind, DRAWS) for kind in range(3))
+    even = draws(3, LONE_DRAWS)
+    known, known_rough, known_smooth = (
+        summaries(drawn, [truth] * DRAWS)
+        for drawn, truth in zip((plain, rough, smooth), truths[:3], strict=True)
+    )
     heavy = fits(plain, SMOOTHER, smoother)
     return Refits(
         plain=Drawn(summaries(plain, fits(plain, 1.0, x)), known),

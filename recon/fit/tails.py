@@ -54,12 +54,12 @@ class Brightest:
     chance: float
 
 
-def brightest_lone(likelihood: Likelihood, x: np.ndarray) -> Brightest | None:
+def brightest_lone(likelihood: Likelihood, x: np.ndarray, lone: np.ndarray) -> Brightest | None:
     """Return the least likely of the lone bright pixels; None without any, or without a law of single pixels.
 
-    Dark regions count as `DARKEST`: a fit makes them zero, where a single detection would be too much.
+    lone: those of `lone_pixels`. Dark regions count as `DARKEST`: a fit makes them zero, where a single
+    detection would be too much.
     """
-    lone = lone_pixels(likelihood, x)
     law = count_law(likelihood, lifted(without_peaks(x), likelihood, DARKEST))
     if law is None or isinstance(law, WaitingLaw) or not lone.any():
         return None

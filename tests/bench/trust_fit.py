@@ -165,10 +165,11 @@ def power(
     named = [set(causes) - {"not converged"} == {cause} for causes in found]
     told_of = told(found)
     if excess is not None:
+        name += ", or said not to be told"
         least = [next(iter(fit.images.values())).least_overdispersion for fit in fits]
         hidden = [not causes and one > excess for causes, one in zip(found, least, strict=True)]
         named = [one or other for one, other in zip(named, hidden, strict=True)]
-        told_of += f"; not to be told, and said so, {sum(hidden)}"
+        told_of += f"; said not to be told {sum(hidden)}"
     return at_least(GROUP, f"found: {name}", float(np.mean(named)), "of seeds", POWER, told_of)
 
 

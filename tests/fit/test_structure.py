@@ -55,18 +55,20 @@ def test_the_least_likely_lone_pixel():
     counts = np.ones((20, 20), int)
     counts[5, 5], counts[15, 8] = 9, 12
     likelihood = Poisson(recon.Counts(counts, 1, several_per_trial=True))
-    found = brightest_lone(likelihood, np.ones((20, 20)))
+    flat = np.ones((20, 20))
+    found = brightest_lone(likelihood, flat, lone_pixels(likelihood, flat))
     assert (found.row, found.column, found.number) == (15, 8, 12.0)
     assert found.mean == found.variance == pytest.approx(1.0)
     assert found.chance == pytest.approx(400 * poisson.sf(11, 1.0), rel=1e-6)
     half = np.ones((20, 20))
     half[:, :10] = counts[:, :10] = 0.0
     counts[15, 8] = 4
-    dark = brightest_lone(Poisson(recon.Counts(counts, 1, several_per_trial=True)), half)
+    likelihood = Poisson(recon.Counts(counts, 1, several_per_trial=True))
+    dark = brightest_lone(likelihood, half, lone_pixels(likelihood, half))
     assert dark.mean == pytest.approx(0.05 * half.mean(), rel=1e-6)
     assert dark.chance == pytest.approx(400 * poisson.sf(3, 0.025), rel=1e-5)
     even = Poisson(recon.Counts(np.ones((20, 20), int), 1, several_per_trial=True))
-    assert brightest_lone(even, np.ones((20, 20))) is None
+    assert brightest_lone(even, flat, lone_pixels(even, flat)) is None
 
 
 def test_peaks_of_one_pixel_are_cut():
