@@ -113,8 +113,8 @@ def goodness(
 
     The deviance and the autocorrelation of residuals are told beside, and deny nothing: an image at its best
     weight has lost some structure, too. The chances of a false alarm of all tests of an acquisition add up
-    to less than 5 % (Bonferroni). Differences too small to matter are let pass: 2 % of dispersion too little, 1 %
-    too much, three lone pixels in a thousand, 15 % of the pulse's width, 1 % of drift.
+    to less than 5 % (Bonferroni). Differences too small to matter are let pass: 2 % of dispersion too
+    little, 1 % too much, three lone pixels in a thousand, 15 % of the pulse's width, 1 % of drift.
 
     result: what `recon.reconstruct` returned. seed: of the draws. callback: called with the name of the image
     and the share of its simulations that is done. Takes about twenty-five solves of each image.
